@@ -45,7 +45,7 @@ enum Shape {
 /// The part of a normal distribution that the limits leave, as probabilities seen from the nearer tail, where they are
 /// small numbers and therefore exact: `probability = start + width u`, mirrored where the limits lie above the centre.
 #[derive(Clone, Copy, Debug, PartialEq)]
-pub struct Tail {
+pub(super) struct Tail {
     start: f64,
     width: f64,
     sign: f64,
@@ -53,7 +53,7 @@ pub struct Tail {
 
 impl Tail {
     /// The part between the standard normal deviates `low` and `high` (infinite where there is no limit).
-    pub fn between(low: f64, high: f64) -> Self {
+    pub(super) fn between(low: f64, high: f64) -> Self {
         if low > 0.0 {
             // Mirrored: z = -quantile(upper tail), and the upper tail falls as the uniform rises.
             let (far, near) = (normal_cdf(-high), normal_cdf(-low));
@@ -70,7 +70,7 @@ impl Tail {
     }
 
     /// Uniforms become standard normal deviates within the limits.
-    pub fn deviates(&self, row: &mut Row) {
+    pub(super) fn deviates(&self, row: &mut Row) {
         if self.is_whole() {
             normal_quantile_row(row);
         } else {

@@ -28,7 +28,10 @@ struct Drawn {
 #[derive(Debug)]
 enum How {
     Number(Sampler),
-    ByClass { of: usize, each: Vec<Sampler> },
+    ByClass {
+        of: usize,
+        each: Vec<Sampler>,
+    },
     /// Upper edges of the classes on the unit interval, the last left out.
     Classes(Vec<f64>),
 }

@@ -132,10 +132,8 @@ fn truncated_lognormal(median: f64, log_sd: f64, low: f64, high: f64) -> (f64, f
 fn triangular(from: f64, mode: f64, to: f64, low: f64, high: f64) -> (f64, f64) {
     let mut moments = [0.0; 3];
     // The density on each piece is slope * (x - origin).
-    let pieces = [
-        (from, mode, 2.0 / ((to - from) * (mode - from)), from),
-        (mode, to, -2.0 / ((to - from) * (to - mode)), to),
-    ];
+    let pieces =
+        [(from, mode, 2.0 / ((to - from) * (mode - from)), from), (mode, to, -2.0 / ((to - from) * (to - mode)), to)];
     for (start, end, slope, origin) in pieces {
         let (start, end) = (start.max(low), end.min(high));
         if start < end {
@@ -156,4 +154,3 @@ fn piece(x: f64, origin: f64, power: usize) -> f64 {
         _ => x * x * x * x / 4.0 - origin * x * x * x / 3.0,
     }
 }
-

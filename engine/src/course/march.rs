@@ -8,7 +8,7 @@ use crate::math::{LANES, Row};
 use crate::scenario::Role;
 
 /// Distinct steps whose matrices are kept for a block; the others are computed where they are met.
-const KEPT_STEPS: usize = 16;
+pub const KEPT_STEPS: usize = 16;
 
 /// The work of one block; belongs to a worker and is used again for the next block.
 #[derive(Debug)]

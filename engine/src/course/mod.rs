@@ -3,5 +3,5 @@
 mod march;
 mod timetable;
 
-pub use march::March;
-pub use timetable::{Fold, Span, Timetable};
+pub use march::{KEPT_STEPS, March};
+pub use timetable::{Fold, Span, Timetable, Track};

@@ -113,7 +113,9 @@ mod tests {
 
     #[test]
     fn disposition_rates_have_their_sum_and_product() {
-        for (k10, k12, k21) in [(0.125, 0.2, 0.1333), (1e-6, 1e3, 1e-3), (5.0, 1e-9, 5.0), (0.0, 0.3, 0.7), (2.0, 0.0, 0.5)] {
+        for (k10, k12, k21) in
+            [(0.125, 0.2, 0.1333), (1e-6, 1e3, 1e-3), (5.0, 1e-9, 5.0), (0.0, 0.3, 0.7), (2.0, 0.0, 0.5)]
+        {
             let (alpha, beta, fast, slow) = disposition(k10, k12, k21);
             assert!((alpha + beta - (k10 + k12 + k21)).abs() <= 4e-16 * alpha, "sum of {k10} {k12} {k21}");
             assert!((alpha * beta - k10 * k21).abs() <= 1e-15 * (k10 * k21), "product of {k10} {k12} {k21}");

@@ -168,11 +168,7 @@ impl Individuals {
 /// One value of a parameter whose random part needs more than an exponential, limits by inversion.
 fn individual(varies: Varies, base: f64, random: f64, low: f64, high: f64) -> f64 {
     let inside = |a: f64, b: f64| {
-        if a == f64::NEG_INFINITY && b == f64::INFINITY {
-            random
-        } else {
-            squeeze(random, a, b)
-        }
+        if a == f64::NEG_INFINITY && b == f64::INFINITY { random } else { squeeze(random, a, b) }
     };
     let value = match varies {
         Varies::Not => base,
@@ -239,9 +235,12 @@ fn mixes(drug: &Drug, count: usize) -> Vec<Vec<(usize, f64)>> {
         matrix[(one, other)] = value;
         matrix[(other, one)] = value;
     }
-    let factor = matrix.cholesky().expect("the scenario's check refuses correlations that are not positive definite").l();
+    let factor =
+        matrix.cholesky().expect("the scenario's check refuses correlations that are not positive definite").l();
     (0..count)
-        .map(|row| (0..=row).map(|column| (column, factor[(row, column)])).filter(|(_, weight)| *weight != 0.0).collect())
+        .map(|row| {
+            (0..=row).map(|column| (column, factor[(row, column)])).filter(|(_, weight)| *weight != 0.0).collect()
+        })
         .collect()
 }
 

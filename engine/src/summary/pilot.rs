@@ -56,6 +56,12 @@ impl Pilot {
         Self { ranks, spans, size }
     }
 
+    /// The pilot's ranks round percentile `index`, both ends included.
+    pub fn span(&self, index: usize) -> (u64, u64) {
+        let span = self.spans[index];
+        (span.low.unwrap_or(0), span.high.unwrap_or(self.size - 1))
+    }
+
     /// What to search for in a series whose pilot has `values` at the pilot's ranks.
     pub fn search(&self, values: &[f64], window: Option<WindowEdges>, signed: bool) -> Search {
         let value = |rank: u64| values[self.ranks.binary_search(&rank).expect("one of the pilot's ranks")];
@@ -125,12 +131,8 @@ mod tests {
     #[test]
     fn ties_are_cut_out() {
         let got = places(&[(1.0, 3.0), (2.0, 5.0), (7.0, 7.0f64.next_up())], &[2.5, 7.0]);
-        let expected = [
-            Place::Between(1.0, 2.5),
-            Place::At(2.5),
-            Place::Between(2.5f64.next_up(), 5.0),
-            Place::At(7.0),
-        ];
+        let expected =
+            [Place::Between(1.0, 2.5), Place::At(2.5), Place::Between(2.5f64.next_up(), 5.0), Place::At(7.0)];
         assert_eq!(got, expected);
     }
 

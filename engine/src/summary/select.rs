@@ -2,20 +2,20 @@
 
 /// Maps a value to an integer that orders as the value does (negative zero below zero).
 #[inline(always)]
-pub fn order_key(value: f64) -> u64 {
+pub(super) fn order_key(value: f64) -> u64 {
     let bits = value.to_bits();
     bits ^ (((bits.cast_signed() >> 63).cast_unsigned()) | (1 << 63))
 }
 
 /// The value of an [`order_key`].
 #[inline(always)]
-pub fn from_order_key(key: u64) -> f64 {
+pub(super) fn from_order_key(key: u64) -> f64 {
     let mask = if key >> 63 == 1 { 1 << 63 } else { u64::MAX };
     f64::from_bits(key ^ mask)
 }
 
 /// Hands the element of each of `ranks` (rising, counted from 0, all below the length) to `found`, reordering `keys`.
-pub fn select(keys: &mut [u64], ranks: &[usize], found: &mut impl FnMut(usize, u64)) {
+pub(super) fn select(keys: &mut [u64], ranks: &[usize], found: &mut impl FnMut(usize, u64)) {
     select_from(keys, 0, ranks, 0, found);
 }
 

@@ -86,6 +86,13 @@ impl Search {
         })
     }
 
+    /// Patients at each point.
+    pub fn tally(&self, kept: &[&Kept]) -> Vec<u64> {
+        let offset = if self.window { 2 } else { 0 };
+        let from = |edge: usize| kept.iter().map(|kept| kept.from_edge[edge]).sum::<u64>();
+        (0..self.points.len()).map(|point| from(offset + 2 * point) - from(offset + 2 * point + 1)).collect()
+    }
+
     /// The order statistics of `ranks` (rising, from 0), or where each must be looked for instead.
     pub fn find(&self, patients: u64, kept: &[&Kept], ranks: &[u64], scratch: &mut Vec<u64>) -> Vec<Found> {
         let mut found = vec![Found::Between(f64::NEG_INFINITY, f64::INFINITY, patients); ranks.len()];

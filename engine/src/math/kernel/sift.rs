@@ -78,11 +78,7 @@ impl Sieve {
 
     /// Empty counts for this sieve.
     pub fn nothing(&self) -> Kept {
-        Kept {
-            from_bracket: vec![0; self.brackets.len()],
-            from_edge: vec![0; self.edges.len()],
-            values: Vec::new(),
-        }
+        Kept { from_bracket: vec![0; self.brackets.len()], from_edge: vec![0; self.edges.len()], values: Vec::new() }
     }
 
     /// Sifts the first `count` lanes of `row`, each times `scale`.
@@ -187,24 +183,28 @@ mod plain {
 }
 
 #[cfg(target_arch = "x86_64")]
-#[expect(unsafe_code, reason = "vector loads and stores by pointer; the plain twin beside it is what tests compare with")]
+#[expect(
+    unsafe_code,
+    reason = "vector loads and stores by pointer; the plain twin beside it is what tests compare with"
+)]
 mod avx512 {
     use std::arch::x86_64::{
-        _mm512_load_pd, _mm512_mask_cmplt_epu32_mask, _mm512_maskz_compress_pd, _mm512_mul_pd,
-        _mm512_permutex2var_epi32, _mm512_set1_epi32, _mm512_set1_pd, _mm512_setr_epi32, _mm512_setzero_si512,
-        _mm512_storeu_pd,
+        __m512d, __m512i, _CMP_GE_OQ, _mm512_castpd_si512, _mm512_cmp_pd_mask, _mm512_cmpge_epu32_mask, _mm512_load_pd,
+        _mm512_mask_cmplt_epu32_mask, _mm512_maskz_compress_pd, _mm512_mul_pd, _mm512_permutex2var_epi32,
+        _mm512_set1_epi32, _mm512_set1_pd, _mm512_setr_epi32, _mm512_setzero_si512, _mm512_storeu_pd,
     };
 
     use super::{Kept, ROOM};
     use crate::math::{LANES, Row};
-
 
     /// Vectors of eight values, and of sixteen keys, in a block.
     const VECTORS: usize = LANES / 8;
     const KEYS: usize = LANES / 16;
 
     pub(super) fn available() -> bool {
-        is_x86_feature_detected!("avx512f") && is_x86_feature_detected!("avx512bw") && is_x86_feature_detected!("popcnt")
+        is_x86_feature_detected!("avx512f")
+            && is_x86_feature_detected!("avx512bw")
+            && is_x86_feature_detected!("popcnt")
     }
 
     /// # Safety
@@ -282,7 +282,8 @@ mod tests {
 
     #[test]
     fn the_kernel_and_its_twin_agree() {
-        let sieve = Sieve::wide(&[(0.1, 0.5), (1.0, 1.0 + 1e-9), (2.0, f64::INFINITY)], &[0.0, 2.0, 2.0f64.next_up(), 3.3]);
+        let sieve =
+            Sieve::wide(&[(0.1, 0.5), (1.0, 1.0 + 1e-9), (2.0, f64::INFINITY)], &[0.0, 2.0, 2.0f64.next_up(), 3.3]);
         for seed in 0..200 {
             for count in [LANES, 0, 1, 7, 255] {
                 let row = row(seed);
@@ -306,7 +307,10 @@ mod tests {
         assert_eq!(kept.from_edge[0], row.iter().filter(|&&value| value >= 2.0).count() as u64);
         assert_eq!(kept.from_edge[1], row.iter().filter(|&&value| value > 2.0).count() as u64);
         for b in 0..2 {
-            assert_eq!(kept.from_bracket[b], row.iter().filter(|&&value| value >= sieve.brackets()[b].0).count() as u64);
+            assert_eq!(
+                kept.from_bracket[b],
+                row.iter().filter(|&&value| value >= sieve.brackets()[b].0).count() as u64
+            );
         }
     }
 }
