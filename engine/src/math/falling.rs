@@ -1,4 +1,19 @@
 //! Divided differences of `exp(-u)`: what multi-exponential kinetics is made of, equal rates and all.
+//!
+//! With `f(u) = exp(-u)` and `f[..]` a divided difference, [`falling1`] is `-f[0, x]`, [`falling2`] is `f[0, x, y]` and
+//! [`falling3`] is `-f[0, x, y, z]`. All are positive and fall with each argument. They are the weights of a dose that
+//! passes one, two, three compartments; a rate that equals another, or nearly so, needs no case of its own, and nothing
+//! is divided by a difference of rates.
+//!
+//! Where the largest argument is large, the recurrence divides by it, and its subtraction costs less than two bits.
+//! Elsewhere `f[0, x, y] = exp(-y) g[y, y - x, 0]` with `g(v) = exp(v)`, whose series has no cancellation: its terms are
+//! positive. The difference of the fitted polynomial is taken by synthetic division, one Horner chain an argument. Both
+//! are computed and one is selected: no branch, and a plain loop is vectorised. The edges between the two, 2 and 3, are
+//! where the worst errors of both sides about agree.
+//!
+//! Source of the recurrence and of the series: McCurdy, Ng and Parlett 1984, Accurate computation of divided differences
+//! of the exponential function, Mathematics of Computation 43:501-528 (from memory); the shift that makes every term
+//! positive and the fits are ours.
 
 use super::exp::{decay, exp};
 
@@ -55,20 +70,51 @@ fn mean_of_decay(lost: f64, x: f64) -> f64 {
     if x == 0.0 { 1.0 } else { lost / x }
 }
 
-/// `(1 - exp(-x)) / x`; 1 at 0.
+/// `-f[0, x] = (1 - exp(-x)) / x`, for `x >= 0`; 1 at 0: the mean of `exp(-t)` for t from 0 to x.
+///
+/// # Accuracy
+/// 1.6 ulp at most in 130,000 random and adversarial points, against 200-bit arithmetic.
+///
+/// # Example
+/// ```
+/// use neap_engine::math::falling1;
+///
+/// assert_eq!(falling1(0.0), 1.0);
+/// assert_eq!(falling1(1e-20), 1.0);
+/// assert!((falling1(2.0) - 0.432_332_358_381_693_65).abs() < 1e-16);
+/// ```
 #[inline(always)]
 pub fn falling1(x: f64) -> f64 {
     mean_of_decay(decay(x).1, x)
 }
 
 /// `exp(-x)` and [`falling1`] of `x`, for the price of one exponential.
+///
+/// ```
+/// use neap_engine::math::{exp, exp_and_falling1, falling1};
+///
+/// assert_eq!(exp_and_falling1(0.7), (exp(-0.7), falling1(0.7)));
+/// ```
 #[inline(always)]
 pub fn exp_and_falling1(x: f64) -> (f64, f64) {
     let (left, lost) = decay(x);
     (left, mean_of_decay(lost, x))
 }
 
-/// The second divided difference of `exp(-u)` over 0, x, y.
+/// `f[0, x, y] = ((1 - exp(-y)) / y - (1 - exp(-x)) / x) / (x - y)`, for `0 <= x <= y`, y finite; 1/2 at 0.
+///
+/// # Accuracy
+/// 4.3 ulp at most, 0.63 on average, in 100,000 random and adversarial points (equal and nearly equal arguments, the edge
+/// of the series), against 200-bit arithmetic and more.
+///
+/// # Example
+/// ```
+/// use neap_engine::math::{exp, falling2};
+///
+/// assert_eq!(falling2(0.0, 0.0), 0.5);
+/// // Equal arguments: (1 - (1 + x) exp(-x)) / x^2.
+/// assert!((falling2(4.0, 4.0) - (1.0 - 5.0 * exp(-4.0)) / 16.0).abs() < 1e-16);
+/// ```
 #[inline(always)]
 pub fn falling2(x: f64, y: f64) -> f64 {
     let gap = y - x;
@@ -95,7 +141,19 @@ fn rising2(v: f64, w: f64) -> f64 {
     second
 }
 
-/// Minus the third divided difference of `exp(-u)` over 0, x, y, z.
+/// `-f[0, x, y, z] = (f[0, x, y] - f[x, y, z]) / z`, for `0 <= x <= y <= z`, z finite; 1/6 at 0.
+///
+/// # Accuracy
+/// 6.6 ulp at most, 0.78 on average, in 100,000 random and adversarial points, against 200-bit arithmetic and more.
+///
+/// # Example
+/// ```
+/// use neap_engine::math::{exp, falling3};
+///
+/// assert_eq!(falling3(0.0, 0.0, 0.0), 1.0 / 6.0);
+/// // Equal arguments: (1 - (1 + x + x^2 / 2) exp(-x)) / x^3.
+/// assert!((falling3(4.0, 4.0, 4.0) - (1.0 - 13.0 * exp(-4.0)) / 64.0).abs() < 1e-16);
+/// ```
 #[inline(always)]
 pub fn falling3(x: f64, y: f64, z: f64) -> f64 {
     let (gap_xy, gap_yz, gap_xz) = (y - x, z - y, z - x);
@@ -129,14 +187,42 @@ fn ordered(a: f64, b: f64) -> (f64, f64) {
     if a < b { (a, b) } else { (b, a) }
 }
 
-/// `exp(-a t)` convolved with `exp(-b t)`, at `h`.
+/// The integral of `exp(-a s) exp(-b (h - s))` for s from 0 to h: what a unit amount that leaves one compartment with
+/// rate `a` has brought, per unit of that rate, into the next, which it leaves with rate `b`, after the time `h`.
+///
+/// `h exp(-min(a, b) h) falling1(|a - b| h)`; any order, any equality of the rates; rates and h not negative, in units
+/// whose product is 1.
+///
+/// # Accuracy
+/// That of [`falling1`] and a few roundings, and the rounding of `min(a, b) h`, which exp magnifies to at most
+/// `min(a, b) h` half-ulps.
+///
+/// # Example
+/// ```
+/// use neap_engine::math::{convolved2, exp};
+///
+/// let (ka, k, t) = (1.3, 0.2, 5.0);
+/// let bateman = (exp(-k * t) - exp(-ka * t)) / (ka - k);
+/// assert!((convolved2(ka, k, t) / bateman - 1.0).abs() < 1e-14);
+/// assert_eq!(convolved2(0.2, 0.2, 5.0), 5.0 * exp(-0.2 * 5.0));
+/// ```
 #[inline(always)]
 pub fn convolved2(a: f64, b: f64, h: f64) -> f64 {
     let (low, high) = ordered(a, b);
     h * exp(-(low * h)) * falling1((high - low) * h)
 }
 
-/// `exp(-a t)`, `exp(-b t)` and `exp(-c t)` convolved, at `h`.
+/// `exp(-a t)`, `exp(-b t)` and `exp(-c t)` convolved, at `h`: `h^2 exp(-min h) falling2(..)` of the differences from the
+/// smallest rate, times h. Domain as [`convolved2`]; a rate of 0 is allowed and gives the integral of the other two.
+///
+/// # Example
+/// ```
+/// use neap_engine::math::convolved3;
+///
+/// // The triangle of 0 <= s <= t <= h has the area h^2 / 2.
+/// assert_eq!(convolved3(0.0, 0.0, 0.0, 3.0), 4.5);
+/// assert_eq!(convolved3(0.7, 0.1, 0.4, 3.0), convolved3(0.4, 0.7, 0.1, 3.0));
+/// ```
 #[inline(always)]
 pub fn convolved3(a: f64, b: f64, c: f64, h: f64) -> f64 {
     let (a, b) = ordered(a, b);
@@ -145,7 +231,17 @@ pub fn convolved3(a: f64, b: f64, c: f64, h: f64) -> f64 {
     h * h * exp(-(a * h)) * falling2((b - a) * h, (c - a) * h)
 }
 
-/// `exp(-a t)`, `exp(-b t)`, `exp(-c t)` and `exp(-d t)` convolved, at `h`.
+/// `exp(-a t)`, `exp(-b t)`, `exp(-c t)` and `exp(-d t)` convolved, at `h`: `h^3 exp(-min h) falling3(..)` of the
+/// differences from the smallest rate, times h. Domain as [`convolved2`].
+///
+/// # Example
+/// ```
+/// use neap_engine::math::convolved4;
+///
+/// // The tetrahedron of 0 <= r <= s <= t <= h has the volume h^3 / 6.
+/// assert!((convolved4(0.0, 0.0, 0.0, 0.0, 3.0) - 4.5).abs() < 1e-15);
+/// assert_eq!(convolved4(0.7, 0.1, 0.4, 0.2, 3.0), convolved4(0.2, 0.4, 0.7, 0.1, 3.0));
+/// ```
 #[inline(always)]
 pub fn convolved4(a: f64, b: f64, c: f64, d: f64, h: f64) -> f64 {
     let (a, b) = ordered(a, b);
@@ -154,4 +250,84 @@ pub fn convolved4(a: f64, b: f64, c: f64, d: f64, h: f64) -> f64 {
     let (b, d) = ordered(b, d);
     let (b, c) = ordered(b, c);
     h * h * h * exp(-(a * h)) * falling3((b - a) * h, (c - a) * h, (d - a) * h)
+}
+
+#[cfg(test)]
+mod tests {
+    use proptest::prelude::*;
+
+    use super::super::reference::{assert_within, points};
+    use super::*;
+
+    #[test]
+    fn falling1_is_within_its_stated_error() {
+        assert_within("falling1", 1.6, |x| falling1(x[0]));
+    }
+
+    #[test]
+    fn falling2_is_within_its_stated_error() {
+        assert_within("falling2", 4.3, |x| falling2(x[0], x[1]));
+    }
+
+    #[test]
+    fn falling3_is_within_its_stated_error() {
+        assert_within("falling3", 6.6, |x| falling3(x[0], x[1], x[2]));
+    }
+
+    /// The rounding of the products of rates and h allows min h half-ulps beside the error of the difference.
+    fn assert_convolved(name: &str, error_of_difference: f64, function: impl Fn(&[f64]) -> f64) {
+        for point in points(name) {
+            let (h, rates) = point.arguments.split_last().expect("rates and h");
+            let slowest = rates.iter().copied().fold(f64::INFINITY, f64::min);
+            // In units of the last place, which is up to twice a rounding unit: each factor and product, twice its own.
+            let bound = 2.0 * (error_of_difference + 4.0) + slowest * h;
+            let error = point.error(function(&point.arguments));
+            assert!(error <= bound, "{name}{:?}: {error} ulp", point.arguments);
+        }
+    }
+
+    #[test]
+    fn convolutions_are_within_their_errors() {
+        assert_convolved("convolved2", 1.6, |x| convolved2(x[0], x[1], x[2]));
+        assert_convolved("convolved3", 4.3, |x| convolved3(x[0], x[1], x[2], x[3]));
+        assert_convolved("convolved4", 6.6, |x| convolved4(x[0], x[1], x[2], x[3], x[4]));
+    }
+
+    #[test]
+    fn coincident_zeros_give_the_first_coefficients() {
+        assert_eq!(falling1(0.0), 1.0);
+        assert_eq!(falling2(0.0, 0.0), 0.5);
+        assert_eq!(falling3(0.0, 0.0, 0.0), 1.0 / 6.0);
+        assert_eq!(convolved2(0.0, 0.0, 2.0), 2.0);
+    }
+
+    #[test]
+    fn far_arguments_stay_finite_and_positive() {
+        for far in [50.0, 1e3, 1e10, 1e100] {
+            assert_eq!(falling1(far), 1.0 / far);
+            for value in [falling2(0.0, far), falling2(far, far), falling3(0.0, 0.0, far), falling3(far, far, far)] {
+                assert!(value > 0.0 && value < 1.0, "{far}: {value}");
+            }
+        }
+    }
+
+    proptest! {
+        /// A convolution does not depend on the order of its rates.
+        #[test]
+        fn order_of_rates_moves_no_bit(a in 0.0..9.0, b in 0.0..9.0, c in 0.0..9.0, d in 0.0..9.0, h in 0.0..9.0) {
+            prop_assert_eq!(convolved2(a, b, h), convolved2(b, a, h));
+            prop_assert_eq!(convolved3(a, b, c, h), convolved3(c, a, b, h));
+            prop_assert_eq!(convolved3(a, b, c, h), convolved3(b, a, c, h));
+            prop_assert_eq!(convolved4(a, b, c, d, h), convolved4(d, c, b, a, h));
+            prop_assert_eq!(convolved4(a, b, c, d, h), convolved4(b, d, a, c, h));
+        }
+
+        /// The larger an argument, the smaller the value; up to the stated error.
+        #[test]
+        fn values_fall(x in 0.0..5.0, gap in 0.0..5.0, more in 0.0..5.0) {
+            let slack = 1.0 + 1e-14;
+            prop_assert!(falling2(x, x + gap + more) <= falling2(x, x + gap) * slack);
+            prop_assert!(falling3(x, x + gap, x + gap + more) <= falling2(x, x + gap) / 3.0 * slack);
+        }
+    }
 }

@@ -111,11 +111,39 @@ fn is_central(u: f64) -> bool {
 }
 
 /// The value below which a standard normal variable falls with probability `u`.
+///
+/// Minus infinity at 0, infinity at 1, NaN outside. Three rational functions: of `0.425^2 - (u - 0.5)^2` in the centre,
+/// of `sqrt(-ln(min(u, 1 - u)))` in the tails, another beyond 5. `normal_quantile(1 - u)` is exactly
+/// `-normal_quantile(u)` where `1 - u` is exact.
+///
+/// # Accuracy
+/// 5.6 ulp at most, 0.92 on average, in 100,000 random and adversarial points from 1e-300 to 1 - 1e-16, against 200-bit
+/// arithmetic. Relative error of the value: it is also kept near u = 0.5.
+///
+/// # Source
+/// Wichura 1988, Algorithm AS 241: The percentage points of the normal distribution, Applied Statistics 37:477-484,
+/// PPND16 (coefficients from memory; the measured error confirms them).
+///
+/// # Example
+/// ```
+/// use neap_engine::math::normal_quantile;
+///
+/// assert_eq!(normal_quantile(0.5), 0.0);
+/// assert!((normal_quantile(0.975) - 1.959_963_984_540_054).abs() < 1e-15);
+/// ```
 pub fn normal_quantile(u: f64) -> f64 {
     if is_central(u) { central(u) } else { tail(u) }
 }
 
-/// [`normal_quantile`] of every lane.
+/// [`normal_quantile`] of every lane, with the same bits: 2.3 ns a value of a uniform sample with AVX-512.
+///
+/// ```
+/// use neap_engine::math::{Row, normal_quantile, normal_quantile_row};
+///
+/// let mut row = Row::splat(1e-9);
+/// normal_quantile_row(&mut row);
+/// assert_eq!(row[17], normal_quantile(1e-9));
+/// ```
 pub fn normal_quantile_row(row: &mut Row) {
     quantile_lanes(&mut row.0);
 }
@@ -146,7 +174,25 @@ fn quantile_lanes(lanes: &mut [f64; LANES]) {
 const ROOT_HALF: f64 = std::f64::consts::FRAC_1_SQRT_2;
 const ROOT_HALF_REST: f64 = -4.833_646_656_726_457e-17;
 
-/// The probability that a standard normal variable is at most `x`.
+/// The probability that a standard normal variable is at most `x`: `erfc(-x / sqrt(2)) / 2`.
+///
+/// Below -0.7 the rounding of `x / sqrt(2)`, which erfc would magnify by x^2, is corrected to first order. About 20 ns; 0
+/// below -38.5.
+///
+/// # Accuracy
+/// Relative: 2.8 ulp at most, 0.42 on average, in 100,000 random points from -37.5 to 8, against 200-bit arithmetic.
+///
+/// # Source
+/// erfc of the libm crate; the exact remainder of a product by splitting: Dekker 1971, A floating-point technique for
+/// extending the available precision, Numerische Mathematik 18:224-242 (from memory).
+///
+/// # Example
+/// ```
+/// use neap_engine::math::normal_cdf;
+///
+/// assert_eq!(normal_cdf(0.0), 0.5);
+/// assert!((normal_cdf(-20.0) / 2.753_624_118_606_233_7e-89 - 1.0).abs() < 1e-15);
+/// ```
 pub fn normal_cdf(x: f64) -> f64 {
     let t = -x * ROOT_HALF;
     let value = 0.5 * libm::erfc(t);
@@ -173,7 +219,92 @@ fn halves(a: f64) -> (f64, f64) {
     (high, a - high)
 }
 
-/// The probability that a standard normal variable is above `x`.
+/// The probability that a standard normal variable is above `x`, accurate where that is small: `normal_cdf(-x)`.
+///
+/// ```
+/// use neap_engine::math::normal_upper_tail;
+///
+/// assert!((normal_upper_tail(3.0) / 0.001_349_898_031_630_094_5 - 1.0).abs() < 1e-15);
+/// ```
 pub fn normal_upper_tail(x: f64) -> f64 {
     normal_cdf(-x)
+}
+
+#[cfg(test)]
+mod tests {
+    use super::super::reference::{assert_same_bits, assert_within};
+    use super::*;
+
+    #[test]
+    fn quantile_is_within_its_stated_error() {
+        assert_within("normal_quantile", 5.6, |x| normal_quantile(x[0]));
+    }
+
+    #[test]
+    fn cdf_is_within_its_stated_error() {
+        assert_within("normal_cdf", 2.8, |x| normal_cdf(x[0]));
+    }
+
+    #[test]
+    fn rows_have_the_bits_of_the_scalar() {
+        assert_same_bits(normal_quantile_row, normal_quantile);
+    }
+
+    #[test]
+    fn rows_all_central_and_all_tail() {
+        for share in [0.3, 0.99, 1e-12, 0.0, 1.0] {
+            let mut row = Row::splat(share);
+            normal_quantile_row(&mut row);
+            assert_eq!(row, Row::splat(normal_quantile(share)));
+        }
+    }
+
+    #[test]
+    fn quantile_at_the_edges() {
+        assert_eq!(normal_quantile(0.0), f64::NEG_INFINITY);
+        assert_eq!(normal_quantile(1.0), f64::INFINITY);
+        assert_eq!(normal_quantile(0.5), 0.0);
+        for outside in [-0.1, 1.1, f64::NAN, f64::INFINITY, f64::NEG_INFINITY] {
+            assert!(normal_quantile(outside).is_nan(), "{outside}");
+        }
+    }
+
+    #[test]
+    fn quantile_is_odd() {
+        for cell in 0..4096 {
+            let share = (f64::from(cell) + 0.5) / 4096.0;
+            assert_eq!(normal_quantile(1.0 - share), -normal_quantile(share));
+        }
+    }
+
+    #[test]
+    fn cdf_at_the_edges() {
+        assert_eq!(normal_cdf(f64::NEG_INFINITY), 0.0);
+        assert_eq!(normal_cdf(f64::INFINITY), 1.0);
+        assert_eq!(normal_cdf(-40.0), 0.0);
+        assert!(normal_cdf(f64::NAN).is_nan());
+        // Subnormal: absolute accuracy only.
+        assert!((normal_cdf(-38.0) - 2.885_428_36e-316).abs() < 1e-321);
+    }
+
+    #[test]
+    fn published_and_computed_values_are_met() {
+        let table = include_str!("../../../tests/reference/statistics/normal_distribution.csv");
+        let mut seen = 0;
+        for line in table.lines().skip(1) {
+            let cells: Vec<&str> = line.split(',').collect();
+            let number = |at: usize| cells[at].parse::<f64>().expect("a number");
+            let (argument, value) = (number(1), number(2));
+            let close = |ours: f64, truth: f64| (ours - truth).abs() <= 1e-15 * truth.abs() + 1e-321;
+            match cells[0] {
+                "cdf" => {
+                    assert!(close(normal_cdf(argument), value), "{line}");
+                    assert!(close(normal_upper_tail(argument), number(5)), "{line}");
+                }
+                _ => assert!(close(normal_quantile(argument), value), "{line}"),
+            }
+            seen += 1;
+        }
+        assert_eq!(seen, 27);
+    }
 }
