@@ -24,9 +24,9 @@ pub(crate) fn fault(fault: &Fault, look: Look) -> String {
             text
         }
         Fault::Refused { message, help } => {
-            let what = Group::with_title(Level::ERROR.primary_title(message.as_str()));
-            let mend = Group::with_title(Level::HELP.secondary_title(help.as_str()));
-            format!("{}\n", renderer.render(&[what, mend]))
+            let what = [Group::with_title(Level::ERROR.primary_title(message.as_str()))];
+            let mend = [Group::with_title(Level::HELP.secondary_title(help.as_str()))];
+            format!("{}\n{}\n", renderer.render(&what), renderer.render(&mend)) // apart: no gutter without a text
         }
         Fault::Io { .. } => {
             format!("{}\n", renderer.render(&[Group::with_title(Level::ERROR.primary_title(fault.to_string()))]))

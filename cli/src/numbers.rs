@@ -85,6 +85,30 @@ pub(crate) fn listed(names: &[String]) -> String {
     }
 }
 
+/// `text` in lines of at most `width` characters, broken between words, each after `indent` blanks.
+pub(crate) fn wrapped(text: &str, width: usize, indent: usize) -> String {
+    let mut lines = String::new();
+    let mut used = 0;
+    for word in text.split_whitespace() {
+        let length = word.chars().count();
+        if used > 0 && used + 1 + length > width {
+            lines.push('\n');
+            used = 0;
+        }
+        if used == 0 {
+            lines.push_str(&" ".repeat(indent));
+            used = indent;
+        } else {
+            lines.push(' ');
+            used += 1;
+        }
+        lines.push_str(word);
+        used += length;
+    }
+    lines.push('\n');
+    lines
+}
+
 /// `value` in the unit, where "1" is a plain number: "75 kg", "0.8".
 pub(crate) fn with_unit(value: f64, unit: &str) -> String {
     match unit {
@@ -114,6 +138,12 @@ mod tests {
         assert_eq!(percent(0.713, 0.704, 0.722), "71.3 % (70.4 to 72.2)");
         assert_eq!(percent(0.713_1, 0.712_6, 0.713_6), "71.31 % (71.26 to 71.36)");
         assert_eq!(percent(0.0, 0.0, 0.000_4), "0.00 % (0.00 to 0.04)");
+    }
+
+    #[test]
+    fn lines_break_between_words() {
+        assert_eq!(wrapped("one two three", 9, 2), "  one two\n  three\n");
+        assert_eq!(wrapped("unbreakable", 4, 1), " unbreakable\n");
     }
 
     #[test]

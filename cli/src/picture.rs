@@ -1,6 +1,7 @@
 //! The bands of one arm as characters: shaded between percentiles, a line for the middle one, the window's limits across.
 
 use std::fmt::Write;
+use std::ops::{Range, RangeInclusive};
 
 use neap_engine::run::AtTime;
 
@@ -11,13 +12,20 @@ use crate::printer::Look;
 const ROWS: usize = 14;
 
 /// Columns of the plot itself, whatever the terminal's width.
-const COLUMNS: std::ops::RangeInclusive<usize> = 24..=96;
+const COLUMNS: RangeInclusive<usize> = 24..=96;
 
 /// Columns left of the plot: the numbers of the upright axis and the axis.
 const LEFT: usize = 10;
 
 /// Columns right of the plot: the names of the window's limits.
 const RIGHT: usize = 8;
+
+/// Columns that one dosing interval takes at least: with fewer, peaks and troughs run into each other, and the picture shows
+/// the beginning and the end of the time instead of all of it.
+const INTERVAL: usize = 12;
+
+/// Columns of the gap between the beginning and the end.
+const GAP: usize = 3;
 
 /// A limit this many times above the highest band is not drawn, so that the bands stay visible.
 const FAR: f64 = 3.0;
@@ -39,6 +47,7 @@ struct Ink {
     level: char,
     foot: char,
     corner: char,
+    left_out: char,
 }
 
 const UNICODE: Ink = Ink {
@@ -51,6 +60,7 @@ const UNICODE: Ink = Ink {
     level: '\u{2500}',
     foot: '\u{252c}',
     corner: '\u{2514}',
+    left_out: '\u{00b7}',
 };
 
 const ASCII: Ink = Ink {
@@ -63,6 +73,7 @@ const ASCII: Ink = Ink {
     level: '-',
     foot: '+',
     corner: '+',
+    left_out: ' ',
 };
 
 /// What all pictures of a run share, so that arms can be compared by eye.
@@ -116,7 +127,9 @@ impl Frame {
     }
 
     /// The bands of one arm over time, with axes and a legend; `None` where there are not two times to draw between.
-    pub(crate) fn draw(&self, times: &[AtTime]) -> Option<String> {
+    ///
+    /// With `interval`, the usual time between doses, a time of many intervals is shown by its beginning and its end.
+    pub(crate) fn draw(&self, times: &[AtTime], interval: Option<f64>) -> Option<String> {
         let (first, last) = (times.first()?, times.last()?);
         if last.time_h <= first.time_h {
             return None;
@@ -124,13 +137,22 @@ impl Frame {
         let ink = if self.look.unicode { &UNICODE } else { &ASCII };
         let columns = (self.look.width.saturating_sub(LEFT + RIGHT)).clamp(*COLUMNS.start(), *COLUMNS.end());
         let drawn = Drawn::of(first.bands.len());
+        let stretches = stretches(first.time_h, last.time_h, columns, interval);
         let mut cells = vec![vec![' '; columns]; ROWS];
-        self.shade(&mut cells, times, &drawn, ink);
+        for stretch in &stretches {
+            self.shade(&mut cells, times, stretch, &drawn, ink);
+        }
         let limit_rows = [("high", self.limits.1), ("low", self.limits.0)]
             .map(|(name, limit)| limit.and_then(|limit| Some((name, limit, self.row(limit)?))));
         for (_, _, row) in limit_rows.iter().flatten() {
             for cell in cells[*row].iter_mut().filter(|cell| **cell != ink.middle) {
                 *cell = ink.limit;
+            }
+        }
+        if let [left, right] = &stretches[..] {
+            for line in &mut cells {
+                line[left.columns.end..right.columns.start].fill(' ');
+                line[left.columns.end + GAP / 2] = ink.left_out;
             }
         }
         let mut text = format!("{:>width$}\n", self.unit, width = LEFT - 1);
@@ -148,7 +170,11 @@ impl Frame {
             text.push_str(line.trim_end());
             text.push('\n');
         }
-        text.push_str(&foot(first.time_h, last.time_h, columns, ink));
+        text.push_str(&foot(&stretches, columns, ink));
+        if let [left, right] = &stretches[..] {
+            let (from, to) = (significant(left.to, 6), significant(right.from, 6));
+            let _ = writeln!(text, "{}from {from} to {to} h: left out of the picture, in the tables", " ".repeat(LEFT));
+        }
         text.push_str(&self.legend(first, &drawn, ink));
         Some(text)
     }
@@ -159,12 +185,10 @@ impl Frame {
         (value >= 0.0 && from_bottom < ROWS).then(|| ROWS - 1 - from_bottom)
     }
 
-    fn shade(&self, cells: &mut [Vec<char>], times: &[AtTime], drawn: &Drawn, ink: &Ink) {
-        let columns = cells[0].len();
-        let (from, to) = (times[0].time_h, times[times.len() - 1].time_h);
+    fn shade(&self, cells: &mut [Vec<char>], times: &[AtTime], stretch: &Stretch, drawn: &Drawn, ink: &Ink) {
         let mut before = None;
-        for column in 0..columns {
-            let time = from + (to - from) * (column as f64 + 0.5) / columns as f64;
+        for column in stretch.columns.clone() {
+            let time = stretch.time(column);
             for (pair, mark) in [(drawn.outer, ink.outer), (drawn.inner, ink.inner)] {
                 let Some((low, high)) = pair else { continue };
                 let (low, high) = (between(times, time, low), between(times, time, high));
@@ -241,26 +265,68 @@ fn between(times: &[AtTime], time: f64, index: usize) -> f64 {
     left.bands[index].value * (1.0 - part) + right.bands[index].value * part
 }
 
+/// A stretch of time and the columns that show it.
+struct Stretch {
+    from: f64,
+    to: f64,
+    columns: Range<usize>,
+}
+
+impl Stretch {
+    /// The time in the middle of a column.
+    fn time(&self, column: usize) -> f64 {
+        let part = ((column - self.columns.start) as f64 + 0.5) / self.columns.len() as f64;
+        self.from + (self.to - self.from) * part
+    }
+
+    /// The column of a time of this stretch.
+    fn column(&self, time: f64) -> usize {
+        let along = (time - self.from) / (self.to - self.from) * self.columns.len() as f64;
+        self.columns.start + (along as usize).min(self.columns.len() - 1)
+    }
+}
+
+/// All of the time, or its beginning and its end where dosing intervals would be too narrow to see.
+fn stretches(from: f64, to: f64, columns: usize, interval: Option<f64>) -> Vec<Stretch> {
+    let whole = || vec![Stretch { from, to, columns: 0..columns }];
+    let Some(interval) = interval else { return whole() };
+    if (to - from) / interval * INTERVAL as f64 <= columns as f64 {
+        return whole();
+    }
+    let half = (columns - GAP) / 2;
+    let long = (half / INTERVAL).max(1) as f64 * interval;
+    if 2.0 * long >= to - from {
+        return whole();
+    }
+    vec![
+        Stretch { from, to: from + long, columns: 0..half },
+        Stretch { from: to - long, to, columns: columns - half..columns },
+    ]
+}
+
 /// The axis of time with its numbers.
-fn foot(from: f64, to: f64, columns: usize, ink: &Ink) -> String {
-    let step = HOURS.into_iter().find(|step| (to - from) / step <= (columns / 9) as f64).unwrap_or(to - from);
-    let first = (from / step).ceil() as u64;
-    let mut axis = vec![ink.level; columns];
+fn foot(stretches: &[Stretch], columns: usize, ink: &Ink) -> String {
+    let mut axis = vec![' '; columns];
     let mut numbers = vec![' '; LEFT + columns + RIGHT];
     let mut free = 0;
-    for tick in first.. {
-        let time = tick as f64 * step;
-        if time > to * (1.0 + 1e-12) {
-            break;
-        }
-        let column = (((time - from) / (to - from)) * columns as f64) as usize;
-        let column = column.min(columns - 1);
-        let label = significant(time, 6);
-        let start = (LEFT + column).saturating_sub(label.len() / 2);
-        axis[column] = ink.foot;
-        if start >= free && start + label.len() <= numbers.len() {
-            numbers[start..start + label.len()].copy_from_slice(&label.chars().collect::<Vec<_>>());
-            free = start + label.len() + 1;
+    for stretch in stretches {
+        let (from, to) = (stretch.from, stretch.to);
+        axis[stretch.columns.clone()].fill(ink.level);
+        let most = (stretch.columns.len() / 7) as f64;
+        let step = HOURS.into_iter().find(|step| (to - from) / step <= most).unwrap_or(to - from);
+        for tick in (from / step).ceil() as u64.. {
+            let time = tick as f64 * step;
+            if time > to * (1.0 + 1e-12) {
+                break;
+            }
+            let column = stretch.column(time);
+            let label: Vec<char> = significant(time, 6).chars().collect();
+            let start = (LEFT + column).saturating_sub(label.len() / 2);
+            axis[column] = ink.foot;
+            if start >= free && start + label.len() <= numbers.len() {
+                numbers[start..start + label.len()].copy_from_slice(&label);
+                free = start + label.len() + 1;
+            }
         }
     }
     let numbers: String = numbers.into_iter().collect();
@@ -281,7 +347,7 @@ mod tests {
     #[test]
     fn a_flat_band_is_where_it_should_be() {
         let times = testing::flat(&[2.0, 4.0, 6.0, 8.0, 10.0], &[0.0, 10.0]);
-        let picture = frame(&times, (Some(3.0), None), false).draw(&times).unwrap();
+        let picture = frame(&times, (Some(3.0), None), false).draw(&times, None).unwrap();
         let rows: Vec<&str> = picture.lines().collect();
         // 14 rows reach to 10.4: a row is 0.743 mg/L, so 10 is in the first, 8 in the fourth, 6 in the sixth.
         let of = |row: usize| rows[1 + row].chars().nth(LEFT + 30).unwrap_or(' ');
@@ -301,7 +367,7 @@ mod tests {
             let look = Look { width, ..testing::look(true) };
             let frame =
                 Frame::of(results.arms.iter().map(|arm| &arm.times[..]), Some((Some(2.0), Some(8.0))), "mg/L", look);
-            let picture = frame.draw(&results.arms[0].times).unwrap();
+            let picture = frame.draw(&results.arms[0].times, Some(12.0)).unwrap();
             // The legend is a sentence and may be longer than a narrow picture.
             assert!(picture.lines().take(ROWS + 3).all(|line| line.chars().count() <= width), "{width}\n{picture}");
         }
@@ -310,25 +376,40 @@ mod tests {
     #[test]
     fn plain_ascii_where_the_locale_has_no_more() {
         let results = testing::results();
-        let picture =
-            frame(&results.arms[0].times, (Some(2.0), Some(8.0)), false).draw(&results.arms[0].times).unwrap();
+        let picture = frame(&results.arms[0].times, (Some(2.0), Some(8.0)), false)
+            .draw(&results.arms[0].times, Some(12.0))
+            .unwrap();
         assert!(picture.is_ascii());
     }
 
     #[test]
     fn a_placebo_and_a_single_time() {
         let nothing = testing::flat(&[0.0, 0.0, 0.0], &[0.0, 24.0]);
-        let picture = frame(&nothing, (None, None), false).draw(&nothing).unwrap();
+        let picture = frame(&nothing, (None, None), false).draw(&nothing, None).unwrap();
         assert!(picture.contains('#'), "{picture}");
         let once = testing::flat(&[1.0, 2.0, 3.0], &[5.0]);
-        assert!(frame(&once, (None, None), false).draw(&once).is_none());
+        assert!(frame(&once, (None, None), false).draw(&once, None).is_none());
     }
 
     #[test]
     fn a_limit_far_above_is_told_not_drawn() {
         let times = testing::flat(&[1.0, 2.0, 3.0], &[0.0, 24.0]);
-        let picture = frame(&times, (Some(1.0), Some(80.0)), false).draw(&times).unwrap();
+        let picture = frame(&times, (Some(1.0), Some(80.0)), false).draw(&times, None).unwrap();
         assert!(picture.contains("the high limit, 80 mg/L, is above the picture"), "{picture}");
+    }
+
+    #[test]
+    fn many_intervals_are_shown_by_their_beginning_and_end() {
+        let shown = |to: f64, columns: usize, interval: Option<f64>| {
+            stretches(0.0, to, columns, interval).iter().map(|s| (s.from, s.to, s.columns.clone())).collect::<Vec<_>>()
+        };
+        assert_eq!(shown(168.0, 62, Some(12.0)), [(0.0, 24.0, 0..29), (144.0, 168.0, 33..62)]);
+        assert_eq!(shown(168.0, 62, None), [(0.0, 168.0, 0..62)]);
+        assert_eq!(shown(48.0, 62, Some(12.0)), [(0.0, 48.0, 0..62)]);
+        let results = testing::results();
+        let picture = frame(&results.arms[0].times, (Some(2.0), Some(8.0)), true);
+        let picture = picture.draw(&results.arms[0].times, Some(12.0)).unwrap();
+        assert!(picture.contains("from 24 to 144 h: left out of the picture, in the tables"), "{picture}");
     }
 
     #[test]

@@ -92,11 +92,14 @@ fn warnings(found: usize) -> String {
 fn population(text: &mut String, checked: &Checked<'_>) {
     let scenario = checked.scenario();
     let population = &scenario.population;
-    let _ = writeln!(text, "Population: {}, seed {}", counted(population.size, "patient"), population.seed);
+    let sampled = if checked.sampled == population.size {
+        "all of them drawn for the figures below".to_owned()
+    } else {
+        format!("the first {} drawn for the figures below", count(checked.sampled))
+    };
+    let _ = writeln!(text, "Population: {}, seed {}, {sampled}", counted(population.size, "patient"), population.seed);
     if population.covariates.is_empty() {
         let _ = writeln!(text, "  no covariates: patients differ by the random parts of the parameters only");
-    } else {
-        let _ = writeln!(text, "  sampled below: the first {}", counted(checked.sampled, "patient"));
     }
     for covariate in &population.covariates {
         let _ = writeln!(text, "  {}: {}", covariate.name, distribution(covariate, &population.covariates));

@@ -13,9 +13,12 @@ use neap_engine::tables::{
 use num_traits::ToPrimitive;
 use serde_json::{Value, json};
 
-use crate::numbers::{counted, listed, ordinal, percent, significant};
+use crate::numbers::{counted, listed, ordinal, percent, significant, wrapped};
 use crate::picture::Frame;
 use crate::printer::Look;
+
+/// Sentences are not wider than this on the widest terminal.
+const WIDEST: usize = 100;
 
 /// A time that the summary shows, and why.
 struct Moment<'a> {
@@ -69,9 +72,10 @@ fn percentile_name(percentile: f64) -> String {
 pub(crate) fn text(results: &Results, folder: &Path, patients_table: bool, look: Look) -> String {
     let scenario = results.plan.scenario();
     let unit = &scenario.output.concentration.text;
+    let width = look.width.min(WIDEST);
     let mut text = String::new();
     for line in [&scenario.title, &scenario.question].into_iter().flatten() {
-        let _ = writeln!(text, "{line}");
+        text += &wrapped(line, width, 0);
     }
     let _ = writeln!(
         text,
@@ -96,19 +100,34 @@ pub(crate) fn text(results: &Results, folder: &Path, patients_table: bool, look:
         let _ = writeln!(text, "\n{}\n", result.name);
         let moments = moments(arm, result);
         text += &if window.is_some() { shares(&moments, results.patients) } else { percentiles(&moments) };
-        for moment in &moments {
-            let _ = writeln!(text, "  {:>8}  {}", hours(moment.at.time_h), moment.why);
-        }
-        if let Some(picture) = frame.draw(&result.times) {
+        let reasons: Vec<String> =
+            moments.iter().map(|moment| format!("{} is {}", hours(moment.at.time_h), moment.why)).collect();
+        let _ = write!(text, "\n{}", wrapped(&format!("{}.", reasons.join("; ")), width, 2));
+        if let Some(picture) = frame.draw(&result.times, interval(arm)) {
             let _ = write!(text, "\n{picture}");
         }
     }
+    text.push('\n');
     let files = listed(&files(results, patients_table).iter().map(|file| (*file).to_owned()).collect::<Vec<_>>());
-    let _ = writeln!(text, "\nA band joins percentiles of the population time by time: no single patient follows one.");
-    let _ = writeln!(text, "Written to {}: {files}", folder.display());
-    let _ = writeln!(text, "The intervals hold sampling error only; {PARAMETER_UNCERTAINTY}.");
-    let _ = writeln!(text, "{} {}", CAUTIONS[0], CAUTIONS[1]);
+    for line in [
+        "A band joins percentiles of the population time by time: no single patient follows one.".to_owned(),
+        format!("The intervals hold sampling error only; {PARAMETER_UNCERTAINTY}."),
+        format!("Written to {}: {files}.", folder.display()),
+        CAUTIONS[..3].join(" "),
+    ] {
+        text += &wrapped(&line, width, 0);
+    }
     text
+}
+
+/// The usual time between doses of an arm: the middle one of the times from each dose to the next; `None` with fewer than three doses.
+fn interval(arm: &Arm) -> Option<f64> {
+    let mut times: Vec<f64> = arm.doses.iter().flat_map(|row| &row.times).filter_map(ToPrimitive::to_f64).collect();
+    times.sort_by(f64::total_cmp);
+    times.dedup();
+    let mut gaps: Vec<f64> = times.windows(2).map(|pair| pair[1] - pair[0]).collect();
+    gaps.sort_by(f64::total_cmp);
+    (gaps.len() >= 2).then(|| gaps[gaps.len() / 2])
 }
 
 fn hours(time: f64) -> String {
@@ -232,21 +251,34 @@ mod tests {
     }
 
     #[test]
+    fn the_usual_interval_is_not_the_exception() {
+        let mut arm = testing::scenario().arms[0].clone();
+        assert_eq!(interval(&arm), Some(12.0));
+        arm.doses[0].times.remove(3);
+        assert_eq!(interval(&arm), Some(12.0));
+        arm.doses[0].times.truncate(2);
+        assert_eq!(interval(&arm), None);
+    }
+
+    #[test]
     fn says_what_has_to_be_said() {
         let text = shown(&testing::results());
+        assert!(text.lines().all(|line| line.chars().count() <= 80), "{text}");
+        let flowing = text.split_whitespace().collect::<Vec<_>>().join(" ");
         for wanted in [
-            "Twice-daily tablets of an invented antiseizure compound\n",
-            "10,000 simulated patients, seed 41, Compound A (invented)\n",
+            "Twice-daily tablets of an invented antiseizure compound",
+            "10,000 simulated patients, seed 41, Compound A (invented)",
             "window of 2 to 8 mg/L",
-            "155 h  the last output time before the last dose (at 156 h)\n",
-            "168 h  the last output time\n",
+            "155 h is the last output time before the last dose (at 156 h)",
+            "168 h is the last output time.",
             "median is highest",
-            "Written to tablets-results: bands.parquet, shares.parquet, population.parquet and run.json\n",
+            "Written to tablets-results: bands.parquet, shares.parquet, population.parquet and run.json.",
             "parameter uncertainty not included",
             "it prescribes for nobody",
         ] {
-            assert!(text.contains(wanted), "{wanted}\n{text}");
+            assert!(flowing.contains(wanted), "{wanted}\n{text}");
         }
+    }
     }
 
     #[test]
