@@ -279,7 +279,6 @@ mod tests {
             assert!(flowing.contains(wanted), "{wanted}\n{text}");
         }
     }
-    }
 
     #[test]
     fn shares_have_intervals_and_fit_eighty_columns() {
