@@ -1,1 +1,7 @@
-//! To come.
+//! Drives dosing and kinetics for a block of patients: the amounts of every dose shape at every output time.
+
+mod march;
+mod timetable;
+
+pub use march::{KEPT_STEPS, March};
+pub use timetable::{Fold, Span, Timetable, Track};

@@ -41,3 +41,9 @@ pub struct Quantity {
     /// The unit.
     pub unit: Unit,
 }
+
+/// The nearest binary number.
+pub fn to_f64(value: &Exact) -> f64 {
+    use num_traits::ToPrimitive;
+    value.to_f64().unwrap_or(f64::NAN)
+}

@@ -8,7 +8,7 @@
 //! held in the unit in which its distribution was written ([`Covariate::unit`]).
 
 use crate::diagnostic::{Diagnostic, Source};
-use crate::quantity::{Exact, Unit};
+use crate::quantity::{Dimension, Exact, Unit};
 
 /// A scenario without faults.
 #[derive(Clone, Debug)]
@@ -165,6 +165,18 @@ pub enum AmountUnit {
     International,
     /// Amount of substance, in mol.
     Mole,
+}
+
+impl AmountUnit {
+    /// The unit of a concentration that the kernels compute in.
+    pub fn per_litre(self) -> Unit {
+        let (text, dimension) = match self {
+            Self::Milligram => ("mg/L", Dimension { mass: 1, length: -3, ..Dimension::default() }),
+            Self::International => ("[IU]/L", Dimension { units: 1, length: -3, ..Dimension::default() }),
+            Self::Mole => ("mol/L", Dimension { substance: 1, length: -3, ..Dimension::default() }),
+        };
+        Unit { text: text.to_owned(), dimension, factor: Exact::from_integer(1.into()) }
+    }
 }
 
 /// The shorthands for compartments and flows.

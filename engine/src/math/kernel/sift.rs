@@ -1,0 +1,316 @@
+//! Counts values at or above some edges, and keeps those within some brackets, in one go over a block.
+//!
+//! Comparing is the cost of exact percentiles, so most comparisons look at the upper 32 bits of a value only: edges that end in
+//! 32 zero bits order the values exactly as all 64 bits would, at half the price. Values therefore must be `+0` or above.
+
+use crate::math::{LANES, Row};
+
+/// Where to count and what to keep.
+#[derive(Clone, Debug, Default, PartialEq)]
+pub struct Sieve {
+    /// From the first, up to but not including the second; the second is infinity for everything above the first.
+    brackets: Vec<(f64, f64)>,
+    /// The upper halves of the brackets' ends, where they decide; else values are compared whole.
+    keys: Option<Vec<(u32, u32)>>,
+    edges: Vec<f64>,
+}
+
+/// What a sieve has counted and kept of one series.
+#[derive(Clone, Debug, Default, PartialEq)]
+pub struct Kept {
+    /// Values at or above the lower end of each bracket.
+    pub from_bracket: Vec<u64>,
+    /// Values at or above each edge.
+    pub from_edge: Vec<u64>,
+    /// Values within any bracket, in no particular order.
+    pub values: Vec<f64>,
+}
+
+/// Room that a block may need: its lanes, and the rest of the vector that the last of them stands in.
+const ROOM: usize = LANES + 8;
+
+/// Upper half of a value's bits: rises with the value for everything from +0 to infinity.
+#[inline(always)]
+fn upper(value: f64) -> u32 {
+    (value.to_bits() >> 32) as u32
+}
+
+/// A key above that of every number, infinity included.
+const ABOVE_ALL: u32 = 0x7ff0_0001;
+
+impl Sieve {
+    /// A sieve for values of `+0` and above, with `brackets` that are closed below and open above and do not overlap, and single
+    /// `edges`. Each bracket is widened to the next numbers that end in 32 zero bits, a relative 1e-6;
+    /// [`Sieve::bracket`] tells its ends as they act.
+    ///
+    /// # Panics
+    /// If a bracket's ends are negative or not in order.
+    pub fn wide(brackets: &[(f64, f64)], edges: &[f64]) -> Self {
+        let keys: Vec<(u32, u32)> = brackets
+            .iter()
+            .map(|&(low, high)| {
+                assert!(low.is_sign_positive() && high >= low, "brackets of non-negative values, ends in order");
+                let above = upper(high) + u32::from(high.to_bits() << 32 != 0);
+                (upper(low), if high == f64::INFINITY { ABOVE_ALL } else { above })
+            })
+            .collect();
+        let end = |key: u32| if key == ABOVE_ALL { f64::INFINITY } else { f64::from_bits(u64::from(key) << 32) };
+        let brackets = keys.iter().map(|&(low, high)| (end(low), end(high))).collect();
+        Self { brackets, keys: Some(keys), edges: edges.to_vec() }
+    }
+
+    /// A sieve whose brackets act exactly as given, for values of any sign.
+    pub fn exact(brackets: &[(f64, f64)], edges: &[f64]) -> Self {
+        Self { brackets: brackets.to_vec(), keys: None, edges: edges.to_vec() }
+    }
+
+    /// The brackets as they act: from the first, up to but not including the second, or to infinity and with it.
+    pub fn brackets(&self) -> &[(f64, f64)] {
+        &self.brackets
+    }
+
+    /// Whether a bracket holds a value.
+    #[inline(always)]
+    pub fn holds(&self, bracket: usize, value: f64) -> bool {
+        let (low, high) = self.brackets[bracket];
+        value >= low && (value < high || high == f64::INFINITY)
+    }
+
+    /// Empty counts for this sieve.
+    pub fn nothing(&self) -> Kept {
+        Kept { from_bracket: vec![0; self.brackets.len()], from_edge: vec![0; self.edges.len()], values: Vec::new() }
+    }
+
+    /// Sifts the first `count` lanes of `row`, each times `scale`.
+    pub fn sift(&self, row: &Row, scale: f64, count: usize, kept: &mut Kept) {
+        let length = kept.values.len();
+        if !self.brackets.is_empty() && kept.values.capacity() < length + ROOM {
+            // A quarter more at a time: what a pass keeps is bounded by a budget.
+            kept.values.reserve_exact(ROOM.max(length / 4));
+        }
+        #[cfg(target_arch = "x86_64")]
+        if let (LANES, Some(keys), true) = (count, &self.keys, avx512::available()) {
+            // SAFETY: the processor has the features, which was just checked.
+            #[expect(unsafe_code, reason = "calls a function compiled for a feature that was checked")]
+            unsafe {
+                avx512::sift(keys, &self.edges, row, scale, kept);
+            }
+            return;
+        }
+        self.sift_plain(row, scale, count, kept);
+    }
+
+    /// The plain twin of the kernel.
+    pub fn sift_plain(&self, row: &Row, scale: f64, count: usize, kept: &mut Kept) {
+        let mut values = *row;
+        plain::scale(&mut values, scale);
+        let mut within = [0u32; LANES];
+        if let Some(ends) = &self.keys {
+            let mut keys = [0u32; LANES];
+            plain::keys(&values, &mut keys);
+            for (&(low, high), total) in ends.iter().zip(&mut kept.from_bracket) {
+                *total += u64::from(plain::bracket(&keys, low, high, count, &mut within));
+            }
+        } else {
+            for (&(low, high), total) in self.brackets.iter().zip(&mut kept.from_bracket) {
+                *total += u64::from(plain::bracket_exact(&values, low, high, count, &mut within));
+            }
+        }
+        for (&edge, total) in self.edges.iter().zip(&mut kept.from_edge) {
+            *total += u64::from(plain::edge(&values, edge, count));
+        }
+        if self.brackets.is_empty() {
+            return;
+        }
+        for lane in 0..count {
+            if within[lane] != 0 {
+                kept.values.push(values[lane]);
+            }
+        }
+    }
+}
+
+mod plain {
+    use multiversion::multiversion;
+
+    use crate::math::{LANES, Row};
+
+    #[multiversion(targets("x86_64+avx2"))]
+    pub(super) fn scale(values: &mut Row, scale: f64) {
+        for value in &mut values.0 {
+            *value *= scale;
+        }
+    }
+
+    #[multiversion(targets("x86_64+avx2"))]
+    pub(super) fn keys(values: &Row, keys: &mut [u32; LANES]) {
+        for (key, value) in keys.iter_mut().zip(&values.0) {
+            *key = (value.to_bits() >> 32) as u32;
+        }
+    }
+
+    #[multiversion(targets("x86_64+avx2"))]
+    pub(super) fn bracket(keys: &[u32; LANES], low: u32, high: u32, count: usize, within: &mut [u32; LANES]) -> u32 {
+        let mut total = 0;
+        for (key, within) in keys[..count].iter().zip(&mut within[..count]) {
+            let from = u32::from(*key >= low);
+            total += from;
+            *within |= from & u32::from(*key < high);
+        }
+        total
+    }
+
+    #[multiversion(targets("x86_64+avx2"))]
+    pub(super) fn bracket_exact(values: &Row, low: f64, high: f64, count: usize, within: &mut [u32; LANES]) -> u32 {
+        let mut total = 0;
+        let open = u32::from(high == f64::INFINITY);
+        for (value, within) in values.0[..count].iter().zip(&mut within[..count]) {
+            let from = u32::from(*value >= low);
+            total += from;
+            *within |= from & (u32::from(*value < high) | open);
+        }
+        total
+    }
+
+    #[multiversion(targets("x86_64+avx2"))]
+    pub(super) fn edge(values: &Row, edge: f64, count: usize) -> u32 {
+        let mut total = 0;
+        for value in &values.0[..count] {
+            total += u32::from(*value >= edge);
+        }
+        total
+    }
+}
+
+#[cfg(target_arch = "x86_64")]
+#[expect(
+    unsafe_code,
+    reason = "vector loads and stores by pointer; the plain twin beside it is what tests compare with"
+)]
+mod avx512 {
+    use std::arch::x86_64::{
+        __m512d, __m512i, _CMP_GE_OQ, _mm512_castpd_si512, _mm512_cmp_pd_mask, _mm512_cmpge_epu32_mask, _mm512_load_pd,
+        _mm512_mask_cmplt_epu32_mask, _mm512_maskz_compress_pd, _mm512_mul_pd, _mm512_permutex2var_epi32,
+        _mm512_set1_epi32, _mm512_set1_pd, _mm512_setr_epi32, _mm512_setzero_si512, _mm512_storeu_pd,
+    };
+
+    use super::{Kept, ROOM};
+    use crate::math::{LANES, Row};
+
+    /// Vectors of eight values, and of sixteen keys, in a block.
+    const VECTORS: usize = LANES / 8;
+    const KEYS: usize = LANES / 16;
+
+    pub(super) fn available() -> bool {
+        is_x86_feature_detected!("avx512f")
+            && is_x86_feature_detected!("avx512bw")
+            && is_x86_feature_detected!("popcnt")
+    }
+
+    /// # Safety
+    /// The processor must have AVX-512F and POPCNT; `kept.values` must have room for [`ROOM`] more.
+    #[target_feature(enable = "avx512f,avx512bw,popcnt")]
+    pub(super) unsafe fn sift(brackets: &[(u32, u32)], edges: &[f64], row: &Row, scale: f64, kept: &mut Kept) {
+        debug_assert!(kept.values.capacity() - kept.values.len() >= ROOM || brackets.is_empty());
+        let scale = _mm512_set1_pd(scale);
+        // SAFETY: a row is 64-byte aligned and holds VECTORS vectors of eight.
+        let value = |index: usize| -> __m512d { unsafe { _mm512_load_pd(row.0.as_ptr().add(8 * index)) } };
+        let odd = _mm512_setr_epi32(1, 3, 5, 7, 9, 11, 13, 15, 17, 19, 21, 23, 25, 27, 29, 31);
+        let mut keys: [__m512i; KEYS] = [_mm512_setzero_si512(); KEYS];
+        for (index, key) in keys.iter_mut().enumerate() {
+            let low = _mm512_castpd_si512(_mm512_mul_pd(value(2 * index), scale));
+            let high = _mm512_castpd_si512(_mm512_mul_pd(value(2 * index + 1), scale));
+            *key = _mm512_permutex2var_epi32(low, odd, high);
+        }
+        let mut within = [0u16; KEYS];
+        for (&(low, high), total) in brackets.iter().zip(&mut kept.from_bracket) {
+            let (low, high) = (_mm512_set1_epi32(low.cast_signed()), _mm512_set1_epi32(high.cast_signed()));
+            let mut count = 0;
+            for (key, within) in keys.iter().zip(&mut within) {
+                let from = _mm512_cmpge_epu32_mask(*key, low);
+                count += from.count_ones();
+                *within |= _mm512_mask_cmplt_epu32_mask(from, *key, high);
+            }
+            *total += u64::from(count);
+        }
+        for (&edge, total) in edges.iter().zip(&mut kept.from_edge) {
+            let edge = _mm512_set1_pd(edge);
+            let mut count = 0;
+            for index in 0..VECTORS {
+                let scaled = _mm512_mul_pd(value(index), scale);
+                count += _mm512_cmp_pd_mask::<_CMP_GE_OQ>(scaled, edge).count_ones();
+            }
+            *total += u64::from(count);
+        }
+        if brackets.is_empty() {
+            return;
+        }
+        let start = kept.values.len();
+        let mut end = start;
+        for (index, within) in within.iter().enumerate() {
+            for (half, mask) in [(0, *within as u8), (1, (*within >> 8) as u8)] {
+                let packed = _mm512_maskz_compress_pd(mask, _mm512_mul_pd(value(2 * index + half), scale));
+                // SAFETY: at most LANES values are kept in all, and a store writes at most 8 past the last: the caller
+                // made that room.
+                unsafe { _mm512_storeu_pd(kept.values.as_mut_ptr().add(end), packed) };
+                end += mask.count_ones() as usize;
+            }
+        }
+        // SAFETY: the values up to `end` were just written, within the capacity.
+        unsafe { kept.values.set_len(end) };
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    fn row(seed: u64) -> Row {
+        let mut row = Row::ZERO;
+        let mut state = seed;
+        for lane in &mut row.0 {
+            state = state.wrapping_mul(6_364_136_223_846_793_005).wrapping_add(1_442_695_040_888_963_407);
+            *lane = match state >> 61 {
+                0 => 0.0,
+                1 => f64::from_bits(state >> 20),
+                2 => 2.0,
+                _ => (state >> 11) as f64 / (1u64 << 51) as f64,
+            };
+        }
+        row
+    }
+
+    #[test]
+    fn the_kernel_and_its_twin_agree() {
+        let sieve =
+            Sieve::wide(&[(0.1, 0.5), (1.0, 1.0 + 1e-9), (2.0, f64::INFINITY)], &[0.0, 2.0, 2.0f64.next_up(), 3.3]);
+        for seed in 0..200 {
+            for count in [LANES, 0, 1, 7, 255] {
+                let row = row(seed);
+                let (mut fast, mut plain) = (sieve.nothing(), sieve.nothing());
+                sieve.sift(&row, 1.25, count, &mut fast);
+                sieve.sift_plain(&row, 1.25, count, &mut plain);
+                assert_eq!(fast, plain, "seed {seed}, {count} lanes");
+            }
+        }
+    }
+
+    #[test]
+    fn counts_and_keeps_what_a_loop_over_values_would() {
+        let sieve = Sieve::wide(&[(0.1, 0.5), (1.0, 2.5)], &[2.0, 2.0f64.next_up()]);
+        let mut kept = sieve.nothing();
+        let row = row(7);
+        sieve.sift(&row, 1.0, LANES, &mut kept);
+        let within = |value: f64| (0..2).any(|b| sieve.holds(b, value));
+        let expected: Vec<f64> = row.iter().copied().filter(|&value| within(value)).collect();
+        assert_eq!(kept.values, expected);
+        assert_eq!(kept.from_edge[0], row.iter().filter(|&&value| value >= 2.0).count() as u64);
+        assert_eq!(kept.from_edge[1], row.iter().filter(|&&value| value > 2.0).count() as u64);
+        for b in 0..2 {
+            assert_eq!(
+                kept.from_bracket[b],
+                row.iter().filter(|&&value| value >= sieve.brackets()[b].0).count() as u64
+            );
+        }
+    }
+}

@@ -1,0 +1,76 @@
+//! How much is kept, and how many passes a memory budget makes of it.
+
+use super::Plan;
+use crate::math::{LANES, Row};
+
+/// Up to so many patients every value is kept: a pilot would not pay.
+pub const DIRECT: u64 = 8192;
+
+/// One patient in so many belongs to the pilot: a larger pilot costs its own pass, a smaller one keeps more values in the run.
+const PILOT_PART: u64 = 24;
+
+/// Growing a list moves it: while it does, old and new stand side by side, a quarter apart.
+const GROWTH: f64 = 1.3;
+
+/// Bytes a series takes beside its kept values: counts, and the room that a block may need, for one worker.
+const SERIES_BYTES: u64 = 8 * (LANES as u64 + 64) + 256;
+
+/// Patients in the pilot of a run; `None` where all values are kept.
+pub fn pilot_size(patients: u64) -> Option<u64> {
+    (patients > DIRECT).then(|| (patients / PILOT_PART).next_multiple_of(LANES as u64).max(1024))
+}
+
+/// Cuts series into tiles that fit the budget, in order: `shares[i]` is the part of `patients` values expected to be kept of
+/// series `i`. A series too large for the budget on its own gets a tile of its own.
+pub fn tiles(shares: &[f64], patients: u64, threads: usize, budget: u64) -> Vec<std::ops::Range<usize>> {
+    let mut out = Vec::new();
+    let (mut start, mut filled) = (0, 0.0);
+    for (index, share) in shares.iter().enumerate() {
+        let bytes = share * patients as f64 * 8.0 * GROWTH + (SERIES_BYTES * threads as u64) as f64;
+        if index > start && filled + bytes > budget as f64 {
+            out.push(start..index);
+            (start, filled) = (index, 0.0);
+        }
+        filled += bytes;
+    }
+    if start < shares.len() {
+        out.push(start..shares.len());
+    }
+    out
+}
+
+impl Plan {
+    /// Bytes of the blocks in work, all threads together.
+    pub fn block_bytes(&self) -> u64 {
+        let rows = self.cohort.len() + 2 * self.individuals.len() + self.individuals.scratch();
+        let march = 8 + 7 * (2 + crate::course::KEPT_STEPS) + 4 * self.protocol.shapes.len() + 8;
+        (self.limits().threads * (rows + march) * size_of::<Row>()) as u64
+    }
+
+    /// Bytes left for kept values.
+    pub fn budget(&self) -> u64 {
+        self.limits().memory.saturating_sub(self.block_bytes())
+    }
+
+    /// The least that a run of this plan works in: blocks, every series' order statistics, and one tile of some size.
+    pub(super) fn least_memory(&self) -> u64 {
+        self.block_bytes() + self.signals() as u64 * 1024 + (4 << 20)
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn tiles_cover_every_series_once_and_in_order() {
+        let shares = [0.5, 0.1, 0.9, 0.0, 0.2, 1.0];
+        for budget in [1, 10_000, 100_000, 1 << 30] {
+            let tiles = tiles(&shares, 10_000, 2, budget);
+            let all: Vec<usize> = tiles.iter().cloned().flatten().collect();
+            assert_eq!(all, (0..shares.len()).collect::<Vec<_>>(), "budget {budget}");
+        }
+        assert_eq!(tiles(&shares, 10_000, 2, 1).len(), shares.len());
+        assert_eq!(tiles(&shares, 10_000, 2, 1 << 30).len(), 1);
+    }
+}

@@ -1,0 +1,281 @@
+//! From ranks to order statistics: a pilot brackets them, passes find them, and a miss is searched again.
+
+use std::time::Instant;
+
+use rayon::iter::{IndexedParallelIterator, IntoParallelIterator, IntoParallelRefMutIterator, ParallelIterator};
+
+use super::worker::{Aims, Clock};
+use super::{Stage, Watch, pass::pass};
+use crate::diagnostic::Fault;
+use crate::math::Kept;
+use crate::plan::{Plan, pilot_size, tiles};
+use crate::scenario::Spread;
+use crate::summary::{Found, Moments, Partial, Parts, Pilot, Place, Ranks, Search};
+
+/// What is wanted of every series.
+pub(super) struct Wanted<'a> {
+    /// Percentiles of each signal.
+    pub(super) signals: &'a [Ranks],
+    /// Percentiles of each quantity of the population.
+    pub(super) quantities: &'a [Ranks],
+    /// Centres of the moments of each quantity; empty without moments.
+    pub(super) centres: &'a [f64],
+    /// Whether windows are counted.
+    pub(super) windows: bool,
+}
+
+/// What was found.
+#[derive(Default)]
+pub(super) struct Answer {
+    /// For each signal: the order statistics, in the order of the ranks asked for, and the parts of the window.
+    pub(super) signals: Vec<Series>,
+    /// For each quantity of the population.
+    pub(super) quantities: Vec<Series>,
+    /// For each quantity, where asked for.
+    pub(super) moments: Vec<Moments>,
+    /// Passes, and of them those that a miss made necessary.
+    pub(super) passes: usize,
+    pub(super) repeats: usize,
+    /// Wall seconds in pilots and in selecting.
+    pub(super) pilot: f64,
+    pub(super) selecting: f64,
+    pub(super) clock: Clock,
+}
+
+/// What was found of one series.
+#[derive(Clone, Debug, Default)]
+pub(super) struct Series {
+    /// One entry a rank.
+    pub(super) values: Vec<f64>,
+    /// Patients below, within and above the window.
+    pub(super) parts: Option<Parts>,
+    /// Patients in each class.
+    pub(super) tally: Vec<u64>,
+}
+
+/// A series on its way: what is still to be found and where to look.
+struct Quest {
+    search: Search,
+    ranks: Vec<u64>,
+    /// Index of each of `ranks` in the answer.
+    slots: Vec<usize>,
+    first: bool,
+}
+
+/// Finds the order statistics of `ranks` among the first `patients` patients.
+pub(super) fn resolve(
+    plan: &Plan,
+    patients: u64,
+    signal_ranks: &[u64],
+    quantity_ranks: &[u64],
+    wanted: &Wanted<'_>,
+    watch: &Watch,
+) -> Result<Answer, Fault> {
+    let mut answer = Answer::default();
+    let pilots = match pilot_size(patients) {
+        None => None,
+        Some(size) => {
+            let start = Instant::now();
+            let signals = Pilot::new(wanted.signals, patients, size);
+            let quantities = Pilot::new(wanted.quantities, patients, size);
+            let inner_signals = pilot_ranks(wanted.signals, patients, size);
+            let inner_quantities = pilot_ranks(wanted.quantities, patients, size);
+            let inner = Wanted { signals: &inner_signals, quantities: &inner_quantities, centres: &[], windows: false };
+            let found = resolve(plan, size, &signals.ranks, &quantities.ranks, &inner, watch)?;
+            answer.pilot = start.elapsed().as_secs_f64();
+            Some((signals, quantities, found))
+        }
+    };
+    watch.enter(Stage::Patients);
+    let window = plan.window.filter(|_| wanted.windows);
+    let mut signals: Vec<Option<Quest>> = (0..plan.signals())
+        .map(|index| {
+            let search = match &pilots {
+                Some((pilot, _, found)) => pilot.search(&found.signals[index].values, window, false),
+                None => Search::new(&[Place::Between(0.0, f64::INFINITY)], window, false, 1.0),
+            };
+            Some(Quest::new(search, signal_ranks))
+        })
+        .collect();
+    let mut quantities: Vec<Option<Quest>> = (0..plan.quantities())
+        .map(|index| {
+            if let Some(classes) = classes(plan, index) {
+                let places: Vec<Place> = (0..classes).map(|class| Place::At(class as f64)).collect();
+                return Some(Quest::new(Search::new(&places, None, true, 0.0), &[]));
+            }
+            let search = match &pilots {
+                Some((_, pilot, found)) => pilot.search(&found.quantities[index].values, None, true),
+                None => Search::new(&[Place::Between(f64::NEG_INFINITY, f64::INFINITY)], None, true, 1.0),
+            };
+            Some(Quest::new(search, quantity_ranks))
+        })
+        .collect();
+    answer.signals = vec![Series { values: vec![f64::NAN; signal_ranks.len()], ..Series::default() }; signals.len()];
+    answer.quantities =
+        vec![Series { values: vec![f64::NAN; quantity_ranks.len()], ..Series::default() }; quantities.len()];
+    let mut first = true;
+    loop {
+        let pending: Vec<usize> = (0..signals.len()).filter(|&index| signals[index].is_some()).collect();
+        let shares: Vec<f64> =
+            pending.iter().map(|&index| signals[index].as_ref().map_or(0.0, |quest| quest.search.share)).collect();
+        let mut rounds: Vec<Vec<usize>> = tiles(&shares, patients, plan.limits().threads, plan.budget())
+            .into_iter()
+            .map(|tile| pending[tile].to_vec())
+            .collect();
+        if rounds.is_empty() {
+            if quantities.iter().all(Option::is_none) {
+                return Ok(answer);
+            }
+            rounds.push(Vec::new());
+        }
+        watch.expect(patients * rounds.len() as u64);
+        for round in rounds {
+            let with_moments = first && answer.passes == 0;
+            let aims = aims(plan, &signals, &round, &quantities, if with_moments { wanted.centres } else { &[] });
+            let partials = pass(plan, &aims, patients, watch, &mut answer.clock)?;
+            answer.passes += 1;
+            answer.repeats += usize::from(!first);
+            watch.enter(Stage::Selecting);
+            let start = Instant::now();
+            let offset = plan.signals();
+            select(&partials, patients, &mut signals, 0, Some(&round), &mut answer.signals);
+            select(&partials, patients, &mut quantities, offset, None, &mut answer.quantities);
+            if with_moments {
+                answer.moments = moments(partials);
+            }
+            answer.selecting += start.elapsed().as_secs_f64();
+            watch.enter(Stage::Patients);
+        }
+        first = false;
+    }
+}
+
+/// The ranks round which the pilot's own order statistics lie, as percentiles of the pilot with their intervals.
+fn pilot_ranks(wanted: &[Ranks], patients: u64, size: u64) -> Vec<Ranks> {
+    let place = |rank: u64| (rank as f64 / (patients - 1) as f64 * (size - 1) as f64) as u64;
+    let pilot = Pilot::new(wanted, patients, size);
+    wanted
+        .iter()
+        .enumerate()
+        .map(|(index, ranks)| {
+            let (low, high) = pilot.span(index);
+            Ranks { at: place(ranks.at), fraction: 0.0, lower: Some(low), upper: Some(high), ..*ranks }
+        })
+        .collect()
+}
+
+/// How many classes a quantity has; `None` for numbers.
+fn classes(plan: &Plan, quantity: usize) -> Option<usize> {
+    match &plan.scenario().population.covariates.get(quantity)?.spread {
+        Spread::Classes { names, .. } => Some(names.len()),
+        _ => None,
+    }
+}
+
+impl Quest {
+    fn new(search: Search, ranks: &[u64]) -> Self {
+        Self { search, ranks: ranks.to_vec(), slots: (0..ranks.len()).collect(), first: true }
+    }
+}
+
+/// What a pass looks at: the signals of its round, and the quantities that are still open.
+fn aims(
+    plan: &Plan,
+    signals: &[Option<Quest>],
+    round: &[usize],
+    quantities: &[Option<Quest>],
+    centres: &[f64],
+) -> Aims {
+    let times = plan.timetable.times.len();
+    let mut chosen = vec![None; signals.len()];
+    let mut until = 0;
+    for &index in round {
+        chosen[index] = signals[index].as_ref().map(|quest| quest.search.clone());
+        until = until.max(index % times + 1);
+    }
+    let nothing = || Search::new(&[], None, true, 0.0);
+    let quantities =
+        quantities.iter().map(|quest| quest.as_ref().map_or_else(nothing, |quest| quest.search.clone())).collect();
+    Aims { signals: chosen, quantities, centres: centres.to_vec(), until }
+}
+
+/// Finds what a pass has kept; quests that are done become `None`, missed ones get a new place to look.
+fn select(
+    partials: &[Partial],
+    patients: u64,
+    quests: &mut [Option<Quest>],
+    offset: usize,
+    round: Option<&[usize]>,
+    answers: &mut [Series],
+) {
+    quests.par_iter_mut().zip(answers.par_iter_mut()).enumerate().for_each_init(
+        Vec::new,
+        |scratch, (index, (slot, answer))| {
+            if round.is_some_and(|round| round.binary_search(&index).is_err()) {
+                return;
+            }
+            let Some(quest) = slot else { return };
+            let kept: Vec<&Kept> = partials.iter().map(|partial| &partial.kept[offset + index]).collect();
+            if quest.first {
+                answer.parts = quest.search.parts(patients, &kept);
+                answer.tally = quest.search.tally(&kept);
+            }
+            let found = quest.search.find(patients, &kept, &quest.ranks, scratch);
+            *slot = quest.missed(&found, answer, patients, offset > 0);
+        },
+    );
+}
+
+impl Quest {
+    /// Takes over what was found; what was missed becomes a new quest.
+    fn missed(&self, found: &[Found], answer: &mut Series, patients: u64, signed: bool) -> Option<Self> {
+        let mut places: Vec<(f64, f64)> = Vec::new();
+        let (mut ranks, mut slots, mut count) = (Vec::new(), Vec::new(), 0);
+        for ((found, &slot), &rank) in found.iter().zip(&self.slots).zip(&self.ranks) {
+            match *found {
+                Found::Value(value) => answer.values[slot] = value,
+                Found::Between(low, high, values) => {
+                    let low = if signed { low } else { low.max(0.0) };
+                    if places.last() != Some(&(low, high)) {
+                        places.push((low, high));
+                        count += values;
+                    }
+                    ranks.push(rank);
+                    slots.push(slot);
+                }
+            }
+        }
+        if ranks.is_empty() {
+            return None;
+        }
+        let places: Vec<Place> = places.iter().map(|&(low, high)| Place::Between(low, high)).collect();
+        let search = Search::new(&places, None, signed, count as f64 / patients as f64);
+        Some(Self { search, ranks, slots, first: false })
+    }
+}
+
+fn moments(partials: Vec<Partial>) -> Vec<Moments> {
+    let mut all = Partial::default();
+    for (index, mut partial) in partials.into_iter().enumerate() {
+        partial.kept.clear();
+        if index == 0 {
+            all = partial;
+        } else {
+            all.merge(&partial);
+        }
+    }
+    all.moments
+}
+
+/// Order statistics for a list of percentiles: the distinct ranks, rising.
+pub(super) fn ranks_of(wanted: &[Ranks]) -> Vec<u64> {
+    let mut ranks: Vec<u64> = wanted.iter().flat_map(Ranks::needed).collect();
+    ranks.sort_unstable();
+    ranks.dedup();
+    ranks
+}
+
+/// Runs `work` on every index below `count`, in parallel, results in order.
+pub(super) fn in_parallel<T: Send>(count: usize, work: impl Fn(usize) -> T + Sync + Send) -> Vec<T> {
+    (0..count).into_par_iter().map(work).collect()
+}

@@ -1,0 +1,175 @@
+//! One series: what is known of where its order statistics lie, what to count and keep to find them, and what was found.
+
+use crate::math::{Kept, Sieve};
+
+use super::select::{from_order_key, order_key, select};
+
+/// Edges of a window: shares are counts at or above them.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub struct WindowEdges {
+    /// Values below are below the window.
+    pub low: f64,
+    /// The first number above the window.
+    pub beyond: f64,
+}
+
+impl WindowEdges {
+    /// Of a window `low <= value <= high`; a side that is missing is open.
+    pub fn new(low: Option<f64>, high: Option<f64>) -> Self {
+        Self { low: low.unwrap_or(f64::NEG_INFINITY), beyond: high.map_or(f64::NAN, f64::next_up) }
+    }
+}
+
+/// Where some order statistics are expected.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub enum Place {
+    /// From the first up to but not including the second (or to infinity and with it).
+    Between(f64, f64),
+    /// All at one value: ties are counted, not kept.
+    At(f64),
+}
+
+/// What to count and keep of a series in one pass.
+#[derive(Clone, Debug)]
+pub struct Search {
+    sieve: Sieve,
+    /// Values held at one point: edges `2 i` and `2 i + 1` after the window's.
+    points: Vec<f64>,
+    window: bool,
+    /// Part of the patients whose values are expected to be kept.
+    pub share: f64,
+}
+
+/// Patients below, within and above a window.
+pub type Parts = [u64; 3];
+
+impl Search {
+    /// Looks in `places`, in rising order, which may touch but not overlap; `share` is the part of the values expected there.
+    /// `signed` says that values may be negative.
+    pub fn new(places: &[Place], window: Option<WindowEdges>, signed: bool, share: f64) -> Self {
+        let brackets: Vec<(f64, f64)> = places
+            .iter()
+            .filter_map(|place| match *place {
+                Place::Between(low, high) => Some((low, high)),
+                Place::At(_) => None,
+            })
+            .collect();
+        let points: Vec<f64> = places
+            .iter()
+            .filter_map(|place| match *place {
+                Place::At(value) => Some(value),
+                Place::Between(..) => None,
+            })
+            .collect();
+        let mut edges = Vec::new();
+        if let Some(window) = window {
+            edges.extend([window.low, window.beyond]);
+        }
+        edges.extend(points.iter().flat_map(|value| [*value, value.next_up()]));
+        // Ties within brackets are kept out by comparing whole values.
+        let exact = signed || (!points.is_empty() && !brackets.is_empty());
+        let sieve = if exact { Sieve::exact(&brackets, &edges) } else { Sieve::wide(&merged(&brackets), &edges) };
+        Self { sieve, points, window: window.is_some(), share }
+    }
+
+    /// The sieve that a pass applies to this series.
+    pub fn sieve(&self) -> &Sieve {
+        &self.sieve
+    }
+
+    /// Patients below, within and above the window; `None` without one.
+    pub fn parts(&self, patients: u64, kept: &[&Kept]) -> Option<Parts> {
+        self.window.then(|| {
+            let from = |edge: usize| kept.iter().map(|kept| kept.from_edge[edge]).sum::<u64>();
+            let (low, beyond) = (from(0), from(1));
+            [patients - low, low - beyond, beyond]
+        })
+    }
+
+    /// Patients at each point.
+    pub fn tally(&self, kept: &[&Kept]) -> Vec<u64> {
+        let offset = if self.window { 2 } else { 0 };
+        let from = |edge: usize| kept.iter().map(|kept| kept.from_edge[edge]).sum::<u64>();
+        (0..self.points.len()).map(|point| from(offset + 2 * point) - from(offset + 2 * point + 1)).collect()
+    }
+
+    /// The order statistics of `ranks` (rising, from 0), or where each must be looked for instead.
+    pub fn find(&self, patients: u64, kept: &[&Kept], ranks: &[u64], scratch: &mut Vec<u64>) -> Vec<Found> {
+        let mut found = vec![Found::Between(f64::NEG_INFINITY, f64::INFINITY, patients); ranks.len()];
+        // Everything that is known, in rising order: a value and how many values lie below it.
+        let mut known: Vec<(f64, u64)> = Vec::new();
+        for (index, &(low, high)) in self.sieve.brackets().iter().enumerate() {
+            let from: u64 = kept.iter().map(|kept| kept.from_bracket[index]).sum();
+            let below = patients - from;
+            scratch.clear();
+            for part in kept {
+                gather(&self.sieve, index, &part.values, scratch);
+            }
+            let above = below + scratch.len() as u64;
+            let start = ranks.partition_point(|&rank| rank < below);
+            let end = ranks.partition_point(|&rank| rank < above);
+            let inside: Vec<usize> = ranks[start..end].iter().map(|&rank| (rank - below) as usize).collect();
+            select(scratch, &inside, &mut |place, key| found[start + place] = Found::Value(from_order_key(key)));
+            known.push((low, below));
+            known.push((high, above));
+        }
+        let offset = if self.window { 2 } else { 0 };
+        for (index, &value) in self.points.iter().enumerate() {
+            let from = |edge: usize| kept.iter().map(|kept| kept.from_edge[edge]).sum::<u64>();
+            let (below, above) = (patients - from(offset + 2 * index), patients - from(offset + 2 * index + 1));
+            for (rank, found) in ranks.iter().zip(&mut found) {
+                if (below..above).contains(rank) {
+                    *found = Found::Value(value);
+                }
+            }
+            known.push((value, below));
+            known.push((value.next_up(), above));
+        }
+        for (&rank, found) in ranks.iter().zip(&mut found) {
+            if let Found::Between(low, high, count) = found {
+                let (mut below, mut above) = (0, patients);
+                for &(value, lower) in &known {
+                    if lower <= rank && value > *low {
+                        (*low, below) = (value, lower);
+                    }
+                    if lower > rank && value < *high {
+                        (*high, above) = (value, lower);
+                    }
+                }
+                *count = above - below;
+            }
+        }
+        found
+    }
+}
+
+/// An order statistic, or where it is: from the first up to but not including the second, among so many values.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub enum Found {
+    /// The value.
+    Value(f64),
+    /// The bracket was missed; it lies here.
+    Between(f64, f64, u64),
+}
+
+/// Keys of the values that one bracket holds.
+fn gather(sieve: &Sieve, bracket: usize, values: &[f64], keys: &mut Vec<u64>) {
+    if sieve.brackets().len() == 1 {
+        keys.extend(values.iter().map(|&value| order_key(value)));
+        return;
+    }
+    keys.extend(values.iter().filter(|&&value| sieve.holds(bracket, value)).map(|&value| order_key(value)));
+}
+
+/// Brackets that touch or overlap become one. Widening moves ends by a relative 1e-6, so nearly touching ones count as
+/// touching.
+fn merged(brackets: &[(f64, f64)]) -> Vec<(f64, f64)> {
+    let mut out: Vec<(f64, f64)> = Vec::with_capacity(brackets.len());
+    for &(low, high) in brackets {
+        match out.last_mut() {
+            Some(last) if low <= last.1 * (1.0 + 4e-6) => last.1 = last.1.max(high),
+            _ => out.push((low, high)),
+        }
+    }
+    out
+}
