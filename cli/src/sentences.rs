@@ -2,11 +2,12 @@
 
 use std::fmt::Write;
 
+use neap_engine::model::{role_name, role_unit};
 use neap_engine::plan::{Explanation, Plan};
+use neap_engine::quantity::to_f64;
 use neap_engine::run::Realised;
 use neap_engine::scenario::{Covariate, Distribution, Factor, Limited, Parameter, Scenario, Spread, Varies};
 use neap_engine::tables::{self, CAUTIONS, PARAMETER_UNCERTAINTY, VERSION, names};
-use num_traits::ToPrimitive;
 use serde_json::{Value, json};
 
 use crate::numbers::{about, count, counted, listed, ordinal, significant, with_unit};
@@ -201,8 +202,8 @@ fn drug(text: &mut String, checked: &Checked<'_>) {
         let _ = writeln!(text, "  between-subject variability is off: the random parts below do not act");
     }
     for parameter in &drug.parameters {
-        let name = names::parameter(parameter.role, drug.model);
-        let unit = names::parameter_unit(parameter.role);
+        let name = role_name(parameter.role, drug.model);
+        let unit = role_unit(parameter.role);
         let typical = with_unit(parameter.typical, unit);
         let _ = writeln!(text, "  {name}: typically {typical}{}", varies(parameter, unit));
         for effect in effects(parameter, name, unit, &scenario.population.covariates) {
@@ -213,7 +214,7 @@ fn drug(text: &mut String, checked: &Checked<'_>) {
         }
     }
     for &(one, other, value) in &drug.correlations {
-        let name = |index: usize| names::parameter(drug.parameters[index].role, drug.model);
+        let name = |index: usize| role_name(drug.parameters[index].role, drug.model);
         let value = significant(value, 4);
         let _ = writeln!(text, "  random parts of {} and {}: correlation {value}", name(one), name(other));
     }
@@ -310,8 +311,8 @@ fn arms(text: &mut String, checked: &Checked<'_>) {
         None => writeln!(text, "\nWindow: none, so no shares"),
     };
     let times = &scenario.output.times;
-    if let (Some(first), Some(last)) = (times.first().and_then(to_f64), times.last().and_then(to_f64)) {
-        let percentiles: Vec<String> = scenario.output.percentiles.iter().filter_map(to_f64).map(ordinal).collect();
+    if let (Some(first), Some(last)) = (times.first().map(to_f64), times.last().map(to_f64)) {
+        let percentiles: Vec<String> = scenario.output.percentiles.iter().map(to_f64).map(ordinal).collect();
         let _ = writeln!(
             text,
             "Output: {} from {} to {} h, {} percentile in {}",
@@ -322,10 +323,6 @@ fn arms(text: &mut String, checked: &Checked<'_>) {
             scenario.output.concentration.text,
         );
     }
-}
-
-fn to_f64(value: impl std::borrow::Borrow<neap_engine::quantity::Exact>) -> Option<f64> {
-    value.borrow().to_f64()
 }
 
 fn work(text: &mut String, checked: &Checked<'_>) {
@@ -366,8 +363,8 @@ pub(crate) fn json(checked: &Checked<'_>) -> String {
     let (drug, explanation, limits) = (&scenario.drug, checked.explanation, checked.plan.limits());
     let covariates = &scenario.population.covariates;
     let parameter = |parameter: &Parameter| {
-        let name = names::parameter(parameter.role, drug.model);
-        let unit = names::parameter_unit(parameter.role);
+        let name = role_name(parameter.role, drug.model);
+        let unit = role_unit(parameter.role);
         let random = match parameter.varies {
             Varies::Not => Value::Null,
             Varies::Lognormal { log_sd } => json!({ "form": "lognormal", "log_sd": log_sd, "cv": cv_of(log_sd) }),

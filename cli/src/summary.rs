@@ -4,13 +4,13 @@
 use std::fmt::Write;
 use std::path::Path;
 
+use neap_engine::quantity::to_f64;
 use neap_engine::run::{ArmResult, AtTime, Counts, Results};
 use neap_engine::scenario::Arm;
 use neap_engine::tables::{
     BANDS, BANDS_METHOD, CAUTIONS, PARAMETER_UNCERTAINTY, PATIENTS, POPULATION, RUN_JSON, SHARES, SHARES_METHOD, Share,
     VERSION, names,
 };
-use num_traits::ToPrimitive;
 use serde_json::{Value, json};
 
 use crate::numbers::{counted, listed, ordinal, percent, significant, wrapped};
@@ -31,7 +31,7 @@ struct Moment<'a> {
 fn moments<'a>(arm: &Arm, result: &'a ArmResult) -> Vec<Moment<'a>> {
     let times = &result.times;
     let mut found: Vec<(usize, String)> = Vec::new();
-    let last_dose = arm.doses.iter().flat_map(|row| &row.times).max().and_then(ToPrimitive::to_f64);
+    let last_dose = arm.doses.iter().flat_map(|row| &row.times).max().map(to_f64);
     if let Some(dose) = last_dose
         && let Some(index) = times.partition_point(|at| at.time_h < dose).checked_sub(1)
     {
@@ -122,7 +122,7 @@ pub(crate) fn text(results: &Results, folder: &Path, patients_table: bool, look:
 
 /// The usual time between doses of an arm: the middle one of the times from each dose to the next; `None` with fewer than three doses.
 fn interval(arm: &Arm) -> Option<f64> {
-    let mut times: Vec<f64> = arm.doses.iter().flat_map(|row| &row.times).filter_map(ToPrimitive::to_f64).collect();
+    let mut times: Vec<f64> = arm.doses.iter().flat_map(|row| &row.times).map(to_f64).collect();
     times.sort_by(f64::total_cmp);
     times.dedup();
     let mut gaps: Vec<f64> = times.windows(2).map(|pair| pair[1] - pair[0]).collect();

@@ -1,33 +1,7 @@
 //! Names and units that tables and summaries share.
 
-use num_traits::ToPrimitive;
-
-use crate::scenario::{AmountUnit, Model, Role, Scenario};
-
-/// The name of a parameter, as it stands in the scenario.
-pub fn parameter(role: Role, model: Model) -> &'static str {
-    match role {
-        Role::Clearance => "clearance",
-        Role::CentralVolume if model == Model::OneCompartment => "volume",
-        Role::CentralVolume => "central_volume",
-        Role::IntercompartmentalClearance => "intercompartmental_clearance",
-        Role::PeripheralVolume => "peripheral_volume",
-        Role::AbsorptionRate => "absorption_rate",
-        Role::LagTime => "lag_time",
-        Role::Bioavailability => "bioavailability",
-    }
-}
-
-/// The unit in which the value of a parameter is held and reported.
-pub fn parameter_unit(role: Role) -> &'static str {
-    match role {
-        Role::Clearance | Role::IntercompartmentalClearance => "L/h",
-        Role::CentralVolume | Role::PeripheralVolume => "L",
-        Role::AbsorptionRate => "/h",
-        Role::LagTime => "h",
-        Role::Bioavailability => "1",
-    }
-}
+use crate::quantity::to_f64;
+use crate::scenario::{AmountUnit, Scenario};
 
 /// The unit in which amounts are counted.
 pub fn amount_unit(unit: AmountUnit) -> &'static str {
@@ -41,7 +15,7 @@ pub fn amount_unit(unit: AmountUnit) -> &'static str {
 /// The limits of the window in the scenario's unit of concentration.
 pub fn window_limits(scenario: &Scenario) -> Option<(Option<f64>, Option<f64>)> {
     let window = scenario.window.as_ref()?;
-    let factor = scenario.output.concentration.factor.to_f64().unwrap_or(f64::NAN);
+    let factor = to_f64(&scenario.output.concentration.factor);
     let limit = |value: Option<f64>| value.map(|value| tidy(value / factor));
     Some((limit(window.low), limit(window.high)))
 }

@@ -5,9 +5,9 @@ use std::sync::Arc;
 use arrow::array::{ArrayRef, Float64Array, Int64Array, RecordBatch, StringArray};
 use arrow::datatypes::{Field, Schema, SchemaRef};
 
-use super::names;
 use super::schema::{Kind, PATIENTS, field};
 use crate::diagnostic::Fault;
+use crate::model::{role_name, role_unit};
 use crate::run::PatientBlock;
 use crate::scenario::{Scenario, Spread};
 
@@ -24,8 +24,8 @@ pub fn patients_schema(scenario: &Scenario) -> SchemaRef {
         });
     }
     for parameter in &scenario.drug.parameters {
-        let name = names::parameter(parameter.role, scenario.drug.model);
-        let unit = names::parameter_unit(parameter.role);
+        let name = role_name(parameter.role, scenario.drug.model);
+        let unit = role_unit(parameter.role);
         fields.push(field(name, Kind::Number, false, unit, "The patient's own value of the parameter"));
     }
     Arc::new(Schema::new(fields))

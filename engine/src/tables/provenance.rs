@@ -3,13 +3,13 @@
 use std::fmt::Write;
 use std::time::{Duration, SystemTime};
 
-use num_traits::ToPrimitive;
 use parquet::file::metadata::KeyValue;
 use serde_json::{Value, json};
 use sha2::{Digest, Sha256};
 
 use super::names;
 use crate::diagnostic::{Diagnostic, Severity, Source};
+use crate::quantity::to_f64;
 use crate::run::Results;
 use crate::scenario::Scenario;
 
@@ -89,7 +89,7 @@ pub(super) fn run_json(results: &Results, started: SystemTime, writing: Duration
         "arms": results.arms.iter().map(|arm| arm.name.as_str()).collect::<Vec<_>>(),
         "window": names::window(scenario),
         "concentration_unit": scenario.output.concentration.text,
-        "percentiles": scenario.output.percentiles.iter().map(ToPrimitive::to_f64).collect::<Vec<_>>(),
+        "percentiles": scenario.output.percentiles.iter().map(to_f64).collect::<Vec<_>>(),
         "between_subject_variability": scenario.between_subject,
         "defaults": scenario.defaults.iter().map(|d| json!({ "key": d.key, "value": d.value })).collect::<Vec<_>>(),
         "warnings": scenario.warnings.iter().map(|w| diagnostic(&scenario.source, w)).collect::<Vec<_>>(),
