@@ -1,6 +1,7 @@
 //! Runs a plan: blocks times passes become results.
 
 mod pass;
+mod pilot;
 mod population;
 mod resolve;
 mod results;
@@ -63,8 +64,8 @@ impl Plan {
     fn answer(&self, signals: &[Ranks], patients: u64, watch: &Watch) -> Result<Answer, Fault> {
         let quantities = quantity_ranks(patients);
         let centres = population::centres(self);
-        let wanted = Wanted { signals, quantities: &quantities, centres: &centres, windows: true };
-        resolve(self, patients, &ranks_of(signals), &ranks_of(&quantities), &wanted, watch)
+        let wanted = Wanted { signals, quantities: &quantities, centres: &centres };
+        resolve(self, patients, &wanted, watch)
     }
 
     fn arms(&self, ranks: &[Ranks], found: &[Series]) -> Vec<ArmResult> {

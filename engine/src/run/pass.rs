@@ -4,30 +4,32 @@ use std::sync::Mutex;
 use std::sync::atomic::{AtomicU64, Ordering};
 
 use super::Watch;
-use super::worker::{Aims, Clock, Worker};
+use super::worker::{Clock, Sink, Worker};
 use crate::diagnostic::Fault;
-use crate::math::LANES;
+use crate::math::{LANES, Row};
 use crate::plan::Plan;
-use crate::summary::Partial;
+use crate::summary::{Partial, Search};
 
 /// One block in so many is timed.
 const TIMED: u64 = 32;
 
-/// Sends the first `patients` patients through the plan; one partial a thread comes back, in no particular order.
-pub(super) fn pass(
+/// Sends the first `patients` patients through the plan, up to output time `until`, into one sink a thread; the sinks come back
+/// in no particular order. `prepare` makes a sink; `count` tells it how many lanes of the next block are patients.
+pub(super) fn pass<S: Sink + Send>(
     plan: &Plan,
-    aims: &Aims,
     patients: u64,
+    until: usize,
     watch: &Watch,
     clock: &mut Clock,
-) -> Result<Vec<Partial>, Fault> {
+    prepare: impl Fn() -> S + Sync,
+    count: impl Fn(&mut S, usize) + Sync,
+) -> Result<Vec<S>, Fault> {
     let blocks = patients.div_ceil(LANES as u64);
     let next = AtomicU64::new(0);
-    let searches = aims.searches();
     let clocks = Mutex::new(Clock::default());
-    let partials = rayon::broadcast(|_| {
+    let sinks = rayon::broadcast(|_| {
         let mut worker = Worker::new(plan);
-        let mut partial = Partial::new(&searches, aims.centres.len());
+        let mut sink = prepare();
         let mut mine = Clock::default();
         while !watch.stopped() {
             let block = next.fetch_add(1, Ordering::Relaxed);
@@ -35,16 +37,16 @@ pub(super) fn pass(
                 break;
             }
             let first = block * LANES as u64;
-            let count = (patients - first).min(LANES as u64) as usize;
-            let timed = block.is_multiple_of(TIMED).then_some(&mut mine);
-            worker.block(aims, first, count, &mut partial, timed);
-            watch.advance(count as u64);
+            let lanes = (patients - first).min(LANES as u64) as usize;
+            count(&mut sink, lanes);
+            worker.block(&mut sink, first, until, block.is_multiple_of(TIMED).then_some(&mut mine));
+            watch.advance(lanes as u64);
         }
         let mut all = clocks.lock().expect("no thread panics while it adds up seconds");
         all.sampling += mine.sampling;
         all.solving += mine.solving;
         all.counting += mine.counting;
-        partial
+        sink
     });
     if watch.stopped() {
         return Err(Fault::Interrupted);
@@ -55,5 +57,58 @@ pub(super) fn pass(
     clock.sampling += timed.sampling * scale;
     clock.solving += timed.solving * scale;
     clock.counting += timed.counting * scale;
-    Ok(partials)
+    Ok(sinks)
+}
+
+/// What a pass looks at.
+pub(super) struct Aims {
+    /// Every search: series of concentrations arm by arm, then quantities of the population; `None` where another pass looks.
+    pub(super) searches: Vec<Option<Search>>,
+    /// How many of them are concentrations.
+    pub(super) signals: usize,
+    /// Centres of the moments of each quantity; empty without moments.
+    pub(super) centres: Vec<f64>,
+}
+
+/// Absorbs blocks into a partial.
+pub(super) struct Absorb<'a> {
+    aims: &'a Aims,
+    pub(super) partial: Partial,
+    lanes: usize,
+}
+
+impl<'a> Absorb<'a> {
+    pub(super) fn new(aims: &'a Aims) -> Self {
+        Self { aims, partial: Partial::new(&aims.searches, aims.centres.len()), lanes: 0 }
+    }
+
+    /// Tells how many lanes of the next block are patients.
+    pub(super) fn count(&mut self, lanes: usize) {
+        self.lanes = lanes;
+        self.partial.patients += lanes as u64;
+    }
+}
+
+impl Sink for Absorb<'_> {
+    fn population(&mut self, covariates: &[Row], parameters: &[Row]) {
+        for (index, row) in covariates.iter().chain(parameters).enumerate() {
+            let series = self.aims.signals + index;
+            if let Some(search) = &self.aims.searches[series] {
+                self.partial.absorb(series, search, row, 1.0, self.lanes);
+            }
+            if let Some(centre) = self.aims.centres.get(index) {
+                self.partial.moments[index].absorb(row, *centre, self.lanes);
+            }
+        }
+    }
+
+    fn wants(&self, series: usize) -> bool {
+        self.aims.searches[series].is_some()
+    }
+
+    fn signal(&mut self, series: usize, row: &Row, scale: f64) {
+        if let Some(search) = &self.aims.searches[series] {
+            self.partial.absorb(series, search, row, scale, self.lanes);
+        }
+    }
 }

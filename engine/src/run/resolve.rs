@@ -4,13 +4,14 @@ use std::time::Instant;
 
 use rayon::iter::{IndexedParallelIterator, IntoParallelIterator, IntoParallelRefMutIterator, ParallelIterator};
 
-use super::worker::{Aims, Clock};
-use super::{Stage, Watch, pass::pass};
+use super::pass::{Absorb, Aims, pass};
+use super::worker::Clock;
+use super::{Stage, Watch, pilot};
 use crate::diagnostic::Fault;
 use crate::math::Kept;
 use crate::plan::{Plan, pilot_size, tiles};
 use crate::scenario::Spread;
-use crate::summary::{Found, Moments, Partial, Parts, Pilot, Place, Ranks, Search};
+use crate::summary::{Found, Moments, Partial, Parts, Place, Ranks, Scratch, Search};
 
 /// What is wanted of every series.
 pub(super) struct Wanted<'a> {
@@ -20,8 +21,6 @@ pub(super) struct Wanted<'a> {
     pub(super) quantities: &'a [Ranks],
     /// Centres of the moments of each quantity; empty without moments.
     pub(super) centres: &'a [f64],
-    /// Whether windows are counted.
-    pub(super) windows: bool,
 }
 
 /// What was found.
@@ -62,52 +61,38 @@ struct Quest {
     first: bool,
 }
 
-/// Finds the order statistics of `ranks` among the first `patients` patients.
-pub(super) fn resolve(
-    plan: &Plan,
-    patients: u64,
-    signal_ranks: &[u64],
-    quantity_ranks: &[u64],
-    wanted: &Wanted<'_>,
-    watch: &Watch,
-) -> Result<Answer, Fault> {
+/// Finds what is wanted among the first `patients` patients.
+pub(super) fn resolve(plan: &Plan, patients: u64, wanted: &Wanted<'_>, watch: &Watch) -> Result<Answer, Fault> {
     let mut answer = Answer::default();
-    let pilots = match pilot_size(patients) {
+    let searches = match pilot_size(patients) {
         None => None,
         Some(size) => {
             let start = Instant::now();
-            let signals = Pilot::new(wanted.signals, patients, size);
-            let quantities = Pilot::new(wanted.quantities, patients, size);
-            let inner_signals = pilot_ranks(wanted.signals, patients, size);
-            let inner_quantities = pilot_ranks(wanted.quantities, patients, size);
-            let inner = Wanted { signals: &inner_signals, quantities: &inner_quantities, centres: &[], windows: false };
-            let found = resolve(plan, size, &signals.ranks, &quantities.ranks, &inner, watch)?;
+            let found = pilot::searches(plan, patients, size, wanted.signals, wanted.quantities, watch)?;
             answer.pilot = start.elapsed().as_secs_f64();
-            Some((signals, quantities, found))
+            Some(found)
         }
     };
+    let (signal_ranks, quantity_ranks) = (ranks_of(wanted.signals), ranks_of(wanted.quantities));
     watch.enter(Stage::Patients);
-    let window = plan.window.filter(|_| wanted.windows);
-    let mut signals: Vec<Option<Quest>> = (0..plan.signals())
-        .map(|index| {
-            let search = match &pilots {
-                Some((pilot, _, found)) => pilot.search(&found.signals[index].values, window, false),
-                None => Search::new(&[Place::Between(0.0, f64::INFINITY)], window, false, 1.0),
-            };
-            Some(Quest::new(search, signal_ranks))
-        })
-        .collect();
-    let mut quantities: Vec<Option<Quest>> = (0..plan.quantities())
-        .map(|index| {
-            if let Some(classes) = classes(plan, index) {
+    let (found_signals, found_quantities) = searches.unwrap_or_else(|| {
+        let all = |least, window, signed| Search::new(&[Place::Between(least, f64::INFINITY)], window, signed, 1.0);
+        (
+            vec![all(0.0, plan.window, false); plan.signals()],
+            vec![all(f64::NEG_INFINITY, None, true); plan.quantities()],
+        )
+    });
+    let mut signals: Vec<Option<Quest>> =
+        found_signals.into_iter().map(|search| Some(Quest::new(search, &signal_ranks))).collect();
+    let mut quantities: Vec<Option<Quest>> = found_quantities
+        .into_iter()
+        .enumerate()
+        .map(|(index, search)| match classes(plan, index) {
+            None => Some(Quest::new(search, &quantity_ranks)),
+            Some(classes) => {
                 let places: Vec<Place> = (0..classes).map(|class| Place::At(class as f64)).collect();
-                return Some(Quest::new(Search::new(&places, None, true, 0.0), &[]));
+                Some(Quest::new(Search::new(&places, None, true, 0.0), &[]))
             }
-            let search = match &pilots {
-                Some((_, pilot, found)) => pilot.search(&found.quantities[index].values, None, true),
-                None => Search::new(&[Place::Between(f64::NEG_INFINITY, f64::INFINITY)], None, true, 1.0),
-            };
-            Some(Quest::new(search, quantity_ranks))
         })
         .collect();
     answer.signals = vec![Series { values: vec![f64::NAN; signal_ranks.len()], ..Series::default() }; signals.len()];
@@ -131,8 +116,10 @@ pub(super) fn resolve(
         watch.expect(patients * rounds.len() as u64);
         for round in rounds {
             let with_moments = first && answer.passes == 0;
-            let aims = aims(plan, &signals, &round, &quantities, if with_moments { wanted.centres } else { &[] });
-            let partials = pass(plan, &aims, patients, watch, &mut answer.clock)?;
+            let centres = if with_moments { wanted.centres } else { &[] };
+            let (aims, until) = aims(plan, &signals, &round, &quantities, centres);
+            let sinks = pass(plan, patients, until, watch, &mut answer.clock, || Absorb::new(&aims), Absorb::count)?;
+            let partials: Vec<Partial> = sinks.into_iter().map(|sink| sink.partial).collect();
             answer.passes += 1;
             answer.repeats += usize::from(!first);
             watch.enter(Stage::Selecting);
@@ -150,20 +137,6 @@ pub(super) fn resolve(
     }
 }
 
-/// The ranks round which the pilot's own order statistics lie, as percentiles of the pilot with their intervals.
-fn pilot_ranks(wanted: &[Ranks], patients: u64, size: u64) -> Vec<Ranks> {
-    let place = |rank: u64| (rank as f64 / (patients - 1) as f64 * (size - 1) as f64) as u64;
-    let pilot = Pilot::new(wanted, patients, size);
-    wanted
-        .iter()
-        .enumerate()
-        .map(|(index, ranks)| {
-            let (low, high) = pilot.span(index);
-            Ranks { at: place(ranks.at), fraction: 0.0, lower: Some(low), upper: Some(high), ..*ranks }
-        })
-        .collect()
-}
-
 /// How many classes a quantity has; `None` for numbers.
 fn classes(plan: &Plan, quantity: usize) -> Option<usize> {
     match &plan.scenario().population.covariates.get(quantity)?.spread {
@@ -178,25 +151,23 @@ impl Quest {
     }
 }
 
-/// What a pass looks at: the signals of its round, and the quantities that are still open.
+/// What a pass looks at: the signals of its round, and the quantities that are still open; and the output time it ends before.
 fn aims(
     plan: &Plan,
     signals: &[Option<Quest>],
     round: &[usize],
     quantities: &[Option<Quest>],
     centres: &[f64],
-) -> Aims {
+) -> (Aims, usize) {
     let times = plan.timetable.times.len();
-    let mut chosen = vec![None; signals.len()];
+    let mut searches = vec![None; signals.len()];
     let mut until = 0;
     for &index in round {
-        chosen[index] = signals[index].as_ref().map(|quest| quest.search.clone());
+        searches[index] = signals[index].as_ref().map(|quest| quest.search.clone());
         until = until.max(index % times + 1);
     }
-    let nothing = || Search::new(&[], None, true, 0.0);
-    let quantities =
-        quantities.iter().map(|quest| quest.as_ref().map_or_else(nothing, |quest| quest.search.clone())).collect();
-    Aims { signals: chosen, quantities, centres: centres.to_vec(), until }
+    searches.extend(quantities.iter().map(|quest| quest.as_ref().map(|quest| quest.search.clone())));
+    (Aims { searches, signals: signals.len(), centres: centres.to_vec() }, until)
 }
 
 /// Finds what a pass has kept; quests that are done become `None`, missed ones get a new place to look.
@@ -209,7 +180,7 @@ fn select(
     answers: &mut [Series],
 ) {
     quests.par_iter_mut().zip(answers.par_iter_mut()).enumerate().for_each_init(
-        Vec::new,
+        Scratch::default,
         |scratch, (index, (slot, answer))| {
             if round.is_some_and(|round| round.binary_search(&index).is_err()) {
                 return;

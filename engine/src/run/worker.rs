@@ -6,7 +6,6 @@ use crate::course::March;
 use crate::math::{LANES, Row};
 use crate::plan::Plan;
 use crate::scenario::Amount;
-use crate::summary::{Partial, Search};
 
 /// Seconds of a worker, by what it did.
 #[derive(Clone, Copy, Debug, Default)]
@@ -14,25 +13,6 @@ pub(super) struct Clock {
     pub(super) sampling: f64,
     pub(super) solving: f64,
     pub(super) counting: f64,
-}
-
-/// What a pass looks at.
-pub(super) struct Aims {
-    /// Series of concentrations, arm by arm; `None` where another pass looks.
-    pub(super) signals: Vec<Option<Search>>,
-    /// Quantities of the population; empty where this pass does not look at them.
-    pub(super) quantities: Vec<Search>,
-    /// Centres of the moments of each quantity; empty without moments.
-    pub(super) centres: Vec<f64>,
-    /// One past the last output time that any series needs.
-    pub(super) until: usize,
-}
-
-impl Aims {
-    /// Every search in one list: signals, then quantities.
-    pub(super) fn searches(&self) -> Vec<Option<Search>> {
-        self.signals.iter().cloned().chain(self.quantities.iter().cloned().map(Some)).collect()
-    }
 }
 
 pub(super) struct Worker<'a> {
@@ -62,80 +42,59 @@ impl<'a> Worker<'a> {
         self.plan.individuals.fill(first, &self.covariates, &mut self.parameters, &mut self.scratch);
     }
 
-    /// Draws, solves and absorbs the first `count` patients of the block.
-    pub(super) fn block(
-        &mut self,
-        aims: &Aims,
-        first: u64,
-        count: usize,
-        partial: &mut Partial,
-        clock: Option<&mut Clock>,
-    ) {
-        match clock {
-            None => self.untimed(aims, first, count, partial),
-            Some(clock) => self.timed(aims, first, count, partial, clock),
-        }
-    }
-
-    fn untimed(&mut self, aims: &Aims, first: u64, count: usize, partial: &mut Partial) {
+    /// Draws and solves the block whose first patient is `first`, and hands it to `sink`.
+    pub(super) fn block(&mut self, sink: &mut impl Sink, first: u64, until: usize, clock: Option<&mut Clock>) {
+        // Asking the clock at every output time is dear, so only some blocks are timed.
+        let mut clock = Stopwatch::new(clock);
         self.draw(first);
-        self.absorb_population(aims, count, partial);
-        self.start();
-        for index in 0..aims.until {
-            self.march.advance(&self.plan.timetable, index);
-            self.absorb_signals(aims, index, count, partial);
-        }
-        partial.patients += count as u64;
-    }
-
-    /// As [`Worker::untimed`], asking the clock at every output time: dear, so only some blocks go this way.
-    fn timed(&mut self, aims: &Aims, first: u64, count: usize, partial: &mut Partial, clock: &mut Clock) {
-        let start = Instant::now();
-        self.draw(first);
-        let drawn = Instant::now();
-        clock.sampling += (drawn - start).as_secs_f64();
-        self.absorb_population(aims, count, partial);
-        let absorbed = Instant::now();
-        clock.counting += (absorbed - drawn).as_secs_f64();
-        self.start();
-        let mut then = Instant::now();
-        clock.solving += (then - absorbed).as_secs_f64();
-        for index in 0..aims.until {
-            self.march.advance(&self.plan.timetable, index);
-            let solved = Instant::now();
-            self.absorb_signals(aims, index, count, partial);
-            let counted = Instant::now();
-            clock.solving += (solved - then).as_secs_f64();
-            clock.counting += (counted - solved).as_secs_f64();
-            then = counted;
-        }
-        partial.patients += count as u64;
-    }
-
-    fn start(&mut self) {
+        clock.lap(|clock| &mut clock.sampling);
+        sink.population(&self.covariates, &self.parameters);
+        clock.lap(|clock| &mut clock.counting);
         let (plan, parameters) = (self.plan, &self.parameters);
         self.march.start(&plan.timetable, |role| plan.individuals.index(role).map(|index| &parameters[index]));
-    }
-
-    fn absorb_population(&mut self, aims: &Aims, count: usize, partial: &mut Partial) {
-        let offset = aims.signals.len();
-        let rows = self.covariates.iter().chain(&self.parameters);
-        for (index, (search, row)) in aims.quantities.iter().zip(rows.clone()).enumerate() {
-            partial.absorb(offset + index, search, row, 1.0, count);
-        }
-        for ((moments, centre), row) in partial.moments.iter_mut().zip(&aims.centres).zip(rows) {
-            moments.absorb(row, *centre, count);
-        }
-    }
-
-    fn absorb_signals(&mut self, aims: &Aims, index: usize, count: usize, partial: &mut Partial) {
-        let times = self.plan.timetable.times.len();
-        for arm in 0..self.plan.protocol.arms.len() {
-            let series = arm * times + index;
-            if let Some(search) = &aims.signals[series] {
-                let (row, scale) = concentration(self.plan, &self.march, &self.covariates, arm, &mut self.mix);
-                partial.absorb(series, search, row, scale, count);
+        let times = plan.timetable.times.len();
+        for index in 0..until {
+            self.march.advance(&plan.timetable, index);
+            clock.lap(|clock| &mut clock.solving);
+            for arm in 0..plan.protocol.arms.len() {
+                let series = arm * times + index;
+                if sink.wants(series) {
+                    let (row, scale) = concentration(plan, &self.march, &self.covariates, arm, &mut self.mix);
+                    sink.signal(series, row, scale);
+                }
             }
+            clock.lap(|clock| &mut clock.counting);
+        }
+    }
+}
+
+/// Takes what a worker computes, row by row.
+pub(super) trait Sink {
+    /// Covariates and parameters of the block.
+    fn population(&mut self, covariates: &[Row], parameters: &[Row]);
+
+    /// Whether this series of concentrations is looked at.
+    fn wants(&self, series: usize) -> bool;
+
+    /// Concentrations of a series: each lane of `row` times `scale`.
+    fn signal(&mut self, series: usize, row: &Row, scale: f64);
+}
+
+/// Adds laps to a clock, if there is one.
+struct Stopwatch<'a> {
+    clock: Option<(&'a mut Clock, Instant)>,
+}
+
+impl<'a> Stopwatch<'a> {
+    fn new(clock: Option<&'a mut Clock>) -> Self {
+        Self { clock: clock.map(|clock| (clock, Instant::now())) }
+    }
+
+    fn lap(&mut self, part: impl Fn(&mut Clock) -> &mut f64) {
+        if let Some((clock, then)) = &mut self.clock {
+            let now = Instant::now();
+            *part(clock) += (now - *then).as_secs_f64();
+            *then = now;
         }
     }
 }

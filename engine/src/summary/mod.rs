@@ -5,6 +5,7 @@
 //! selection. A missed bracket shows in the counts, and the place where the order statistic really is gets searched in one
 //! more pass. Brackets therefore decide how fast an answer comes, never what it is.
 
+mod histogram;
 mod interval;
 mod partial;
 mod pilot;
@@ -12,8 +13,10 @@ mod ranks;
 mod select;
 mod series;
 
+pub use histogram::{CELLS, Cells};
 pub use interval::{order_statistic_ranks, wilson};
 pub use partial::{Moments, Partial};
 pub use pilot::Pilot;
 pub use ranks::Ranks;
+pub use select::Scratch;
 pub use series::{Found, Parts, Place, Search, WindowEdges};

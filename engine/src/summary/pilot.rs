@@ -1,88 +1,75 @@
-//! From a small run of the first patients to the places where a large one must look.
+//! From the first patients to the places where a run over all of them must look.
 
-use super::{Place, Ranks, WindowEdges, series::Search};
+use super::{Cells, Place, Ranks, WindowEdges, series::Search};
 
 /// Standard errors of the pilot by which each place is widened. A miss costs one more pass, not correctness: at 4.5 about one
 /// run in a hundred has one among its 1,000 places.
 const WIDTHS: f64 = 4.5;
 
-/// Order statistics looked at within each place, to notice ties.
-const PROBES: u64 = 4;
-
-/// Which order statistics of a pilot tell where those of the whole run lie.
+/// Where in a pilot of some size the order statistics of a run lie, give or take the pilot's own error.
 #[derive(Clone, Debug)]
 pub struct Pilot {
-    /// Ranks in the pilot, rising, from 0.
-    pub ranks: Vec<u64>,
-    spans: Vec<Span>,
+    spans: Vec<(f64, f64)>,
     size: u64,
 }
 
-/// The part of the pilot's ranks round one percentile; `None` where it is open to that side.
-#[derive(Clone, Copy, Debug)]
-struct Span {
-    low: Option<u64>,
-    high: Option<u64>,
-}
-
-impl Span {
-    fn probes(self, size: u64) -> impl Iterator<Item = u64> {
-        let (low, high) = (self.low.unwrap_or(0), self.high.unwrap_or(size - 1));
-        (0..=PROBES).map(move |probe| low + (high - low) * probe / PROBES)
-    }
-}
-
 impl Pilot {
-    /// A pilot of `size` patients for order statistics of `patients` patients.
+    /// A pilot of `size` patients for the order statistics of `patients` patients.
     pub fn new(wanted: &[Ranks], patients: u64, size: u64) -> Self {
         let place = |rank: u64| rank as f64 / (patients - 1) as f64 * (size - 1) as f64;
-        let spans: Vec<Span> = wanted
+        let spans = wanted
             .iter()
             .map(|ranks| {
                 let first = ranks.needed().next().expect("a percentile needs at least one order statistic");
                 let last = ranks.needed().last().expect("a percentile needs at least one order statistic");
                 let p = ranks.probability;
                 let margin = WIDTHS * (size as f64 * p * (1.0 - p)).sqrt() + 2.0;
-                let (low, high) = (place(first) - margin, place(last) + margin);
-                Span {
-                    low: (low >= 0.0).then_some(low as u64),
-                    high: (high <= (size - 1) as f64).then_some(high as u64 + 1).filter(|&rank| rank < size),
-                }
+                (place(first) - margin, place(last) + margin)
             })
             .collect();
-        let mut ranks: Vec<u64> = spans.iter().flat_map(|span| span.probes(size)).collect();
-        ranks.sort_unstable();
-        ranks.dedup();
-        Self { ranks, spans, size }
+        Self { spans, size }
     }
 
-    /// The pilot's ranks round percentile `index`, both ends included.
-    pub fn span(&self, index: usize) -> (u64, u64) {
-        let span = self.spans[index];
-        (span.low.unwrap_or(0), span.high.unwrap_or(self.size - 1))
+    /// What to search for in a series of non-negative values: `sample` are its first values, sorted, which show ties;
+    /// `histogram` is of the whole pilot.
+    pub fn search(&self, sample: &[f64], cells: Cells, histogram: &[u32], window: Option<WindowEdges>) -> Search {
+        let at = |place: f64| if place < 0.0 { None } else { cells.value(histogram, place) };
+        self.place(sample, &at, 0.0, window, false)
     }
 
-    /// What to search for in a series whose pilot has `values` at the pilot's ranks.
-    pub fn search(&self, values: &[f64], window: Option<WindowEdges>, signed: bool) -> Search {
-        let value = |rank: u64| values[self.ranks.binary_search(&rank).expect("one of the pilot's ranks")];
-        let least = if signed { f64::NEG_INFINITY } else { 0.0 };
-        let mut between: Vec<(f64, f64)> = Vec::new();
-        let mut ties: Vec<f64> = Vec::new();
-        let mut kept: Vec<(u64, u64)> = Vec::new();
-        for span in &self.spans {
-            let probes: Vec<f64> = span.probes(self.size).map(value).collect();
-            ties.extend(probes.windows(2).filter(|pair| pair[0] == pair[1]).map(|pair| pair[0]));
-            let low = span.low.map_or(least, |_| probes[0]);
-            let high = span.high.map_or(f64::INFINITY, |_| probes[probes.len() - 1].next_up());
-            between.push((low, high));
-            if probes[0] != probes[probes.len() - 1] || span.low.is_none() || span.high.is_none() {
-                kept.push((span.low.unwrap_or(0), span.high.unwrap_or(self.size - 1)));
-            }
+    /// What to search for in a series of values of any sign, whose whole pilot is `sorted`.
+    pub fn search_sorted(&self, sorted: &[f64]) -> Search {
+        let at = |place: f64| if place < 0.0 { None } else { sorted.get(place.ceil() as usize).copied() };
+        self.place(sorted, &at, f64::NEG_INFINITY, None, true)
+    }
+
+    fn place(
+        &self,
+        sorted: &[f64],
+        at: &impl Fn(f64) -> Option<f64>,
+        least: f64,
+        window: Option<WindowEdges>,
+        signed: bool,
+    ) -> Search {
+        if let (Some(first), Some(last)) = (sorted.first(), sorted.last())
+            && first == last
+        {
+            // Everyone alike, as before the first dose or without variability.
+            return Search::new(&[Place::At(*first)], window, signed, 0.0);
         }
-        ties.sort_by(f64::total_cmp);
+        let mut ties: Vec<f64> = sorted.windows(2).filter(|pair| pair[0] == pair[1]).map(|pair| pair[0]).collect();
         ties.dedup();
-        let share = union(kept.iter().map(|&(low, high)| (low as f64, high as f64 + 1.0))) / self.size as f64;
-        Search::new(&places(&between, &ties), window, signed, share)
+        let between: Vec<(f64, f64)> = self
+            .spans
+            .iter()
+            .map(|&(low, high)| (at(low).unwrap_or(least), at(high).map_or(f64::INFINITY, f64::next_up)))
+            .collect();
+        let size = self.size as f64;
+        let share = union(self.spans.iter().zip(&between).map(|(&(low, high), &(from, to))| {
+            let low = if from == least { 0.0 } else { low };
+            (low, if to == f64::INFINITY { size } else { high })
+        }));
+        Search::new(&places(&between, &ties), window, signed, (share / size).min(1.0))
     }
 }
 
@@ -97,7 +84,7 @@ fn union(intervals: impl Iterator<Item = (f64, f64)>) -> f64 {
 }
 
 /// Intervals with the points of ties cut out of them, in rising order.
-pub(super) fn places(between: &[(f64, f64)], ties: &[f64]) -> Vec<Place> {
+fn places(between: &[(f64, f64)], ties: &[f64]) -> Vec<Place> {
     let mut joined: Vec<(f64, f64)> = Vec::new();
     let mut sorted = between.to_vec();
     sorted.sort_by(|a, b| a.0.total_cmp(&b.0));

@@ -2,7 +2,7 @@
 
 use crate::math::{Kept, Sieve};
 
-use super::select::{from_order_key, order_key, select};
+use super::select::{Bracket, Scratch, count_from, select};
 
 /// Edges of a window: shares are counts at or above them.
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -94,22 +94,24 @@ impl Search {
     }
 
     /// The order statistics of `ranks` (rising, from 0), or where each must be looked for instead.
-    pub fn find(&self, patients: u64, kept: &[&Kept], ranks: &[u64], scratch: &mut Vec<u64>) -> Vec<Found> {
+    pub fn find(&self, patients: u64, kept: &[&Kept], ranks: &[u64], scratch: &mut Scratch) -> Vec<Found> {
         let mut found = vec![Found::Between(f64::NEG_INFINITY, f64::INFINITY, patients); ranks.len()];
         // Everything that is known, in rising order: a value and how many values lie below it.
         let mut known: Vec<(f64, u64)> = Vec::new();
-        for (index, &(low, high)) in self.sieve.brackets().iter().enumerate() {
-            let from: u64 = kept.iter().map(|kept| kept.from_bracket[index]).sum();
-            let below = patients - from;
-            scratch.clear();
-            for part in kept {
-                gather(&self.sieve, index, &part.values, scratch);
-            }
-            let above = below + scratch.len() as u64;
+        let lists: Vec<&[f64]> = kept.iter().map(|kept| kept.values.as_slice()).collect();
+        let brackets = self.sieve.brackets();
+        // Values are kept within brackets only, so those from the start of a bracket to that of the next are its own.
+        let mut from: Vec<usize> = brackets.iter().map(|&(low, _)| count_from(&lists, low)).collect();
+        from.push(0);
+        for (index, &(low, high)) in brackets.iter().enumerate() {
+            let below = patients - kept.iter().map(|kept| kept.from_bracket[index]).sum::<u64>();
+            let inside = from[index] - from[index + 1];
+            let above = below + inside as u64;
             let start = ranks.partition_point(|&rank| rank < below);
             let end = ranks.partition_point(|&rank| rank < above);
-            let inside: Vec<usize> = ranks[start..end].iter().map(|&rank| (rank - below) as usize).collect();
-            select(scratch, &inside, &mut |place, key| found[start + place] = Found::Value(from_order_key(key)));
+            let wanted: Vec<usize> = ranks[start..end].iter().map(|&rank| (rank - below) as usize).collect();
+            let bracket = Bracket { low, high, inside, from: from[index] };
+            select(&lists, bracket, &wanted, scratch, &mut |place, value| found[start + place] = Found::Value(value));
             known.push((low, below));
             known.push((high, above));
         }
@@ -150,15 +152,6 @@ pub enum Found {
     Value(f64),
     /// The bracket was missed; it lies here.
     Between(f64, f64, u64),
-}
-
-/// Keys of the values that one bracket holds.
-fn gather(sieve: &Sieve, bracket: usize, values: &[f64], keys: &mut Vec<u64>) {
-    if sieve.brackets().len() == 1 {
-        keys.extend(values.iter().map(|&value| order_key(value)));
-        return;
-    }
-    keys.extend(values.iter().filter(|&&value| sieve.holds(bracket, value)).map(|&value| order_key(value)));
 }
 
 /// Brackets that touch or overlap become one. Widening moves ends by a relative 1e-6, so nearly touching ones count as

@@ -1,0 +1,122 @@
+//! A small run of the first patients, to know where to look in the large one. It decides how fast the answer comes, not what it is.
+
+use super::Watch;
+use super::pass::pass;
+use super::worker::{Clock, Sink, Worker};
+use crate::diagnostic::Fault;
+use crate::math::{LANES, Row};
+use crate::plan::Plan;
+use crate::summary::{CELLS, Cells, Pilot, Ranks, Search};
+
+/// Patients whose covariates and parameters are all kept to place the searches for their percentiles.
+const POPULATION: u64 = 4096;
+
+/// What to search for in every series of `patients` patients: signals, then quantities.
+pub(super) fn searches(
+    plan: &Plan,
+    patients: u64,
+    size: u64,
+    signals: &[Ranks],
+    quantities: &[Ranks],
+    watch: &Watch,
+) -> Result<(Vec<Search>, Vec<Search>), Fault> {
+    let mut sample = Sample::new(plan);
+    Worker::new(plan).block(&mut sample, 0, plan.timetable.times.len(), None);
+    for values in &mut sample.signals {
+        values.sort_unstable_by(f64::total_cmp);
+    }
+    let pilot = Pilot::new(signals, patients, size);
+    let mut found = Vec::with_capacity(plan.signals());
+    // As many series at a time as histograms fit into half the budget.
+    let bytes = (CELLS * size_of::<u32>() * plan.limits().threads) as u64;
+    let at_a_time = (plan.budget() / 2 / bytes).max(1) as usize;
+    for (round, samples) in sample.signals.chunks(at_a_time).enumerate() {
+        let first = round * at_a_time;
+        let cells: Vec<Cells> = samples.iter().map(|sample| Cells::covering(sample)).collect();
+        let needed: Vec<bool> = samples.iter().map(|sample| sample.first() != sample.last()).collect();
+        let times = plan.timetable.times.len();
+        let until = if samples.len() >= times {
+            times
+        } else {
+            (first..first + samples.len()).map(|s| s % times + 1).max().unwrap_or(0)
+        };
+        watch.expect(size);
+        let prepare =
+            || Count { first, cells: &cells, needed: &needed, histograms: vec![0; CELLS * samples.len()], lanes: 0 };
+        let counts =
+            pass(plan, size, until, watch, &mut Clock::default(), prepare, |count, lanes| count.lanes = lanes)?;
+        for (index, (sample, cells)) in samples.iter().zip(&cells).enumerate() {
+            let mut histogram = vec![0u32; CELLS];
+            for count in &counts {
+                let part = &count.histograms[CELLS * index..CELLS * (index + 1)];
+                histogram.iter_mut().zip(part).for_each(|(sum, part)| *sum += part);
+            }
+            found.push(pilot.search(sample, *cells, &histogram, plan.window));
+        }
+    }
+    let size = POPULATION.min(size);
+    let pilot = Pilot::new(quantities, patients, size);
+    let population = population(plan, size).iter().map(|sorted| pilot.search_sorted(sorted)).collect();
+    Ok((found, population))
+}
+
+/// Sorted values of each quantity of the first patients.
+fn population(plan: &Plan, patients: u64) -> Vec<Vec<f64>> {
+    let mut worker = Worker::new(plan);
+    let mut values: Vec<Vec<f64>> = vec![Vec::with_capacity(patients as usize); plan.quantities()];
+    for first in (0..patients).step_by(LANES) {
+        worker.draw(first);
+        let count = (patients - first).min(LANES as u64) as usize;
+        for (values, row) in values.iter_mut().zip(worker.covariates.iter().chain(&worker.parameters)) {
+            values.extend_from_slice(&row[..count]);
+        }
+    }
+    values.iter_mut().for_each(|values| values.sort_unstable_by(f64::total_cmp));
+    values
+}
+
+/// Every concentration of one block.
+struct Sample {
+    signals: Vec<Vec<f64>>,
+}
+
+impl Sample {
+    fn new(plan: &Plan) -> Self {
+        Self { signals: vec![Vec::new(); plan.signals()] }
+    }
+}
+
+impl Sink for Sample {
+    fn population(&mut self, _: &[Row], _: &[Row]) {}
+
+    fn wants(&self, _: usize) -> bool {
+        true
+    }
+
+    fn signal(&mut self, series: usize, row: &Row, scale: f64) {
+        self.signals[series].extend(row.iter().map(|value| value * scale));
+    }
+}
+
+/// Histograms of some series.
+struct Count<'a> {
+    first: usize,
+    cells: &'a [Cells],
+    needed: &'a [bool],
+    histograms: Vec<u32>,
+    lanes: usize,
+}
+
+impl Sink for Count<'_> {
+    fn population(&mut self, _: &[Row], _: &[Row]) {}
+
+    fn wants(&self, series: usize) -> bool {
+        series.checked_sub(self.first).and_then(|index| self.needed.get(index)).copied().unwrap_or(false)
+    }
+
+    fn signal(&mut self, series: usize, row: &Row, scale: f64) {
+        let index = series - self.first;
+        let histogram = &mut self.histograms[CELLS * index..CELLS * (index + 1)];
+        self.cells[index].absorb(row, scale, self.lanes, histogram);
+    }
+}
