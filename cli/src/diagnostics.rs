@@ -71,21 +71,23 @@ fn report<'a>(source: &'a Source, found: &'a Diagnostic) -> Vec<Group<'a>> {
     } else {
         group = group.element(Origin::path(source.name.as_str()));
     }
-    for help in &found.help {
+    let edit = found.mend.as_ref().filter(|mend| one_line(mend.span, &mend.replacement, &source.text));
+    // With an edit to show, the last sentence of help is the edit's title.
+    let (title, sentences) = match (edit, &found.help[..]) {
+        (Some(_), [before @ .., last]) => (last.as_str(), before),
+        (_, sentences) => ("write it so", sentences),
+    };
+    for help in sentences {
         group = group.element(Level::HELP.message(help.as_str()));
     }
-    let mut groups = Vec::new();
-    match &found.mend {
-        Some(mend) if one_line(mend.span, &mend.replacement, &source.text) => {
-            groups.push(group);
-            let patch = Patch::new(range(mend.span, &source.text), mend.replacement.as_str());
-            let snippet = Snippet::source(source.text.as_str()).path(source.name.as_str()).patch(patch);
-            groups.push(Group::with_title(Level::HELP.secondary_title("write it so")).element(snippet));
-        }
-        Some(mend) => {
-            groups.push(group.element(Level::HELP.message(format!("write it so: {}", mend.replacement))));
-        }
-        None => groups.push(group),
+    if let (None, Some(mend)) = (edit, &found.mend) {
+        group = group.element(Level::HELP.message(format!("write it so: {}", mend.replacement)));
+    }
+    let mut groups = vec![group];
+    if let Some(mend) = edit {
+        let patch = Patch::new(range(mend.span, &source.text), mend.replacement.as_str());
+        let snippet = Snippet::source(source.text.as_str()).path(source.name.as_str()).patch(patch);
+        groups.push(Group::with_title(Level::HELP.secondary_title(title)).element(snippet));
     }
     groups
 }

@@ -1,13 +1,15 @@
 //! The bar on standard error: what is being done, how much of it, how fast, how long still. Only on a terminal.
 
+use std::fmt;
 use std::io::{self, IsTerminal};
 use std::sync::atomic::{AtomicBool, Ordering};
 use std::thread;
 use std::time::Duration;
 
-use indicatif::{ProgressBar, ProgressDrawTarget, ProgressStyle};
+use indicatif::{ProgressBar, ProgressDrawTarget, ProgressState, ProgressStyle};
 use neap_engine::run::{Stage, Watch};
 
+use crate::numbers::count;
 use crate::printer::Look;
 
 /// How often the bar looks.
@@ -58,8 +60,11 @@ fn follow(watch: &Watch, look: Look, done: &AtomicBool) {
 
 fn make(look: Look) -> ProgressBar {
     let bar = ProgressBar::with_draw_target(None, ProgressDrawTarget::stderr());
-    let template = "{msg}  {bar:24}  {human_pos} of {human_len} patients, {per_sec}, {eta} left";
+    let template = "{msg}  {wide_bar} {human_pos} of {human_len} patients, {rate}/s, {eta} left";
     if let Ok(style) = ProgressStyle::with_template(template) {
+        let style = style.with_key("rate", |state: &ProgressState, text: &mut dyn fmt::Write| {
+            let _ = text.write_str(&count(state.per_sec() as u64));
+        });
         bar.set_style(style.progress_chars(if look.unicode { "\u{2588}\u{2592}\u{2591}" } else { "=> " }));
     }
     bar

@@ -173,7 +173,11 @@ fn temporary(parent: &Path, what: &str) -> io::Result<TempDir> {
         use std::os::unix::fs::PermissionsExt;
         builder.permissions(fs::Permissions::from_mode(0o777)); // less the umask; tempfile's own default shuts colleagues out
     }
-    builder.tempdir_in(parent)
+    builder.tempdir_in(parent).map_err(|error| {
+        // Without the name that was tried, which nobody has heard of.
+        let code = error.get_ref().and_then(|inner| inner.source()?.downcast_ref::<io::Error>()?.raw_os_error());
+        code.map_or(error, io::Error::from_raw_os_error)
+    })
 }
 
 /// Waits until the names in a folder are on the disk; elsewhere than on Unix a folder cannot be opened for it.

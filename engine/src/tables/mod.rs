@@ -23,7 +23,7 @@ mod testing;
 
 pub use folder::check_destination;
 pub use patients::{check_patients, patients_schema};
-pub use provenance::{CAUTIONS, PARAMETER_UNCERTAINTY, RUN_JSON, VERSION, diagnostic, line_and_column, sha256};
+pub use provenance::{CAUTIONS, PARAMETER_UNCERTAINTY, RUN_JSON, VERSION, diagnostic, sha256};
 pub use rows::{BANDS_METHOD, EVERYONE, SHARES_METHOD, Share};
 pub use schema::{BANDS, Column, ColumnUnit, DESCRIPTION, Kind, PATIENTS, POPULATION, SHARES, TABLES, Table, UNIT};
 
