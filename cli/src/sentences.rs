@@ -520,10 +520,4 @@ mod tests {
         assert_eq!(value["sampled"][0]["statistic"], "mean");
         assert_eq!(value["work"]["threads"], 2);
     }
-
-    #[test]
-    #[ignore = "shows the sentences to a person"]
-    fn look_at_it() {
-        crate::printer::Printer::of_this_process().out(&with(text)).unwrap();
-    }
 }

@@ -331,10 +331,4 @@ mod tests {
         assert_eq!(value["files"][3], "patients.parquet");
         assert_eq!(value["parameter_uncertainty"], PARAMETER_UNCERTAINTY);
     }
-
-    #[test]
-    #[ignore = "shows the summary to a person"]
-    fn look_at_it() {
-        crate::printer::Printer::of_this_process().out(&shown(&testing::results())).unwrap();
-    }
 }
