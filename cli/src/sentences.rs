@@ -338,13 +338,9 @@ fn work(text: &mut String, checked: &Checked<'_>) {
             1 => "one pass".to_owned(),
             passes => format!("{passes} passes"),
         },
-        match explanation.pilots[..] {
-            [] => String::new(),
-            [ref before @ .., last] => {
-                let mut pilots: Vec<String> = before.iter().map(|patients| count(*patients)).collect();
-                pilots.push(counted(last, "patient"));
-                format!(" after a pilot of {}", listed(&pilots))
-            }
+        match explanation.pilot {
+            None => String::new(),
+            Some(patients) => format!(" after a pilot of {}", counted(patients, "patient")),
         },
     );
     let _ = writeln!(
@@ -413,7 +409,7 @@ pub(crate) fn json(checked: &Checked<'_>) -> String {
             "values": explanation.values,
             "dose_shapes": explanation.shapes,
             "passes": explanation.passes,
-            "pilots": explanation.pilots,
+            "pilot": explanation.pilot,
             "kept_bytes": explanation.kept_bytes,
             "memory_budget_bytes": limits.memory,
             "threads": limits.threads,
