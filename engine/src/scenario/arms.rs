@@ -168,7 +168,9 @@ fn settled(
     let example = per.map_or_else(|| "500 mg".to_owned(), |unit| format!("25 mg/{}", unit.text));
     let measured = reader.measure(node, &Wants { name: "amount", dimension: None, example: &example })?;
     let dimension = measured.quantity.unit.dimension.times(below);
-    let Some(unit) = AmountUnit::ALL.into_iter().find(|unit| unit.dimension() == dimension) else {
+    // "25 %" of a weight is a mass too, and surely no dose.
+    let quotient = per.is_none() || measured.quantity.unit.text.contains(['/', '-']);
+    let Some(unit) = AmountUnit::ALL.into_iter().find(|unit| quotient && unit.dimension() == dimension) else {
         reader.report(no_amount(&measured, per, &example));
         return None;
     };

@@ -56,10 +56,6 @@ impl<'n> Frame<'n> {
         let measured = reader.measure(node, &Wants { name: shown, dimension, example: &example })?;
         let unit = self.unit.get_or_insert_with(|| measured.quantity.unit.clone());
         let value = measured.quantity.in_unit(unit);
-        if !value.is_finite() {
-            reader.report(Diagnostic::error(measured.span, format!("`{name}` is beyond all measure")));
-            return None;
-        }
         Some((value, measured))
     }
 

@@ -10,6 +10,9 @@ use super::{Additive, Covariate, Factor, Limited, Parameter, Spread};
 use crate::diagnostic::{Diagnostic, Span};
 use crate::quantity::{Dimension, Unit, to_f64};
 
+/// No power is higher.
+const LARGEST_EXPONENT: f64 = 20.0;
+
 /// What acts on one parameter.
 #[derive(Default)]
 pub(super) struct Effects {
@@ -174,7 +177,12 @@ fn numeric(
                     .report(Diagnostic::error(measured.span, "`reference` must be above zero").label("not above zero"));
                 return None;
             }
-            Factor::Power { covariate, reference: reference?, exponent: exponent?.0 }
+            let (exponent, span) = exponent?;
+            if exponent.abs() > LARGEST_EXPONENT {
+                reader.report(super::reader::beyond(span, "exponent"));
+                return None;
+            }
+            Factor::Power { covariate, reference: reference?, exponent }
         }
         "slope" => {
             let slope = per_covariate(reader, section, "slope", Dimension::NONE, unit);

@@ -26,6 +26,9 @@ mod schedule;
 mod spread;
 mod variation;
 
+#[cfg(test)]
+mod tests;
+
 use crate::diagnostic::{Diagnostic, Source};
 use crate::quantity::{Exact, Unit};
 

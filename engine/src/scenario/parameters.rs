@@ -87,7 +87,13 @@ fn one<'t>(
     let kind = match known(reader, entry, model) {
         Ok(kind) => kind,
         // The name that was meant counts as written: its absence is no further fault.
-        Err(meant) => return meant.map(named),
+        Err(meant) => {
+            // What the table says is judged all the same.
+            if let Some(kind) = KINDS.iter().find(|kind| Some(kind.name) == meant) {
+                body(reader, entry, kind, covariates);
+            }
+            return meant.map(named);
+        }
     };
     used(reader, entry, kind, model, demand);
     let parameter = body(reader, entry, kind, covariates);

@@ -10,6 +10,15 @@ use super::nearest::nearest;
 use crate::diagnostic::{Diagnostic, Span};
 use crate::quantity::{Dimension, Exact, Quantity, decimal, to_f64};
 
+/// Quantities lie between this and its inverse, in base units: products and quotients of two of them stay finite.
+const FARTHEST: f64 = 1e150;
+/// Bare numbers (exponents, spreads of logarithms, correlations) are far smaller.
+const LARGEST_NUMBER: f64 = 1e6;
+/// No coefficient of variation is larger: 10,000 %.
+const LARGEST_SHARE: f64 = 100.0;
+/// No time of a trial is longer: more than 100,000 years.
+const MOST_HOURS: f64 = 1e9;
+
 /// Collects faults, warnings and defaults while the document is read.
 #[derive(Default)]
 pub(super) struct Reader {
@@ -264,11 +273,11 @@ impl Reader {
     pub(super) fn number_of(&mut self, name: &str, node: &Node) -> Option<Exact> {
         match &node.value {
             Value::Number(number) => {
-                if number.exact.is_none() {
-                    let said = format!("`{name}` wants a finite number of sensible length");
-                    self.report(Diagnostic::error(node.span, said).label("not a number to reckon with"));
+                let sensible = number.exact.clone().filter(|exact| to_f64(exact).abs() <= LARGEST_NUMBER);
+                if sensible.is_none() {
+                    self.report(beyond(node.span, name).label("not a number to reckon with"));
                 }
-                number.exact.clone()
+                sensible
             }
             Value::Text { text, .. } if decimal(text.trim()).is_some() => {
                 let fault = Diagnostic::error(node.span, format!("`{name}` wants a bare number, without quotes"));
@@ -312,6 +321,10 @@ impl Reader {
             self.report(Diagnostic::error(node.span, format!("`{key}` is below zero")).label("negative"));
             return None;
         }
+        if to_f64(&value) > LARGEST_SHARE {
+            self.report(beyond(node.span, key));
+            return None;
+        }
         Some((value, node.span))
     }
 
@@ -327,7 +340,17 @@ impl Reader {
     /// A time in h that is not negative, exactly.
     pub(super) fn time(&mut self, section: &Section, key: &str) -> Option<(Exact, Span)> {
         let measured = self.quantity(section, key)?;
-        self.not_negative(key, &measured).map(|time| (time, measured.span))
+        self.hours(key, &measured).map(|time| (time, measured.span))
+    }
+
+    /// The exact value of a time in h that is not negative.
+    pub(super) fn hours(&mut self, name: &str, measured: &Measured) -> Option<Exact> {
+        let time = self.not_negative(name, measured)?;
+        if to_f64(&time) > MOST_HOURS {
+            self.report(beyond(measured.span, name));
+            return None;
+        }
+        Some(time)
     }
 
     /// The exact value in base units, if it is not below zero.
@@ -448,8 +471,10 @@ impl Reader {
             return None;
         }
         let base = measured.quantity.in_base();
-        if !base.is_finite() || (base == 0.0) != measured.quantity.value.is_zero() {
-            self.report(Diagnostic::error(node.span, format!("`{}` is beyond all measure", wants.name)));
+        let magnitude = base.abs();
+        let sensible = measured.quantity.value.is_zero() || (1.0 / FARTHEST..=FARTHEST).contains(&magnitude);
+        if !sensible {
+            self.report(beyond(node.span, wants.name));
             return None;
         }
         Some(measured)
@@ -461,7 +486,8 @@ impl Reader {
             wants.kind(),
             wants.example
         ));
-        if wants.dimension.is_none() {
+        // Amounts and concentrations settle their dimension too, and are never pure.
+        if wants.dimension.is_none() && !matches!(wants.name, "amount" | "low" | "high") {
             fault = fault.help("A pure number has the unit 1: \"3.2 1\".");
         }
         self.report(fault);
@@ -478,6 +504,11 @@ impl Wants<'_> {
     fn phrase(&self) -> String {
         format!("{}, as in \"{}\"", self.kind(), self.example)
     }
+}
+
+/// The fault of a value that cannot be meant.
+pub(super) fn beyond(at: Span, name: &str) -> Diagnostic {
+    Diagnostic::error(at, format!("`{name}` is beyond all measure")).label("out of range")
 }
 
 /// A whole number with its digits in threes, as the file format allows.

@@ -58,7 +58,7 @@ fn listed(reader: &mut Reader, section: &Section) -> Option<Vec<Exact>> {
     let mut times: Vec<Exact> = Vec::with_capacity(items.len());
     let mut sound = !clash;
     for item in items {
-        let time = reader.measure(item, &wants).and_then(|measured| reader.not_negative("at", &measured));
+        let time = reader.measure(item, &wants).and_then(|measured| reader.hours("at", &measured));
         let Some(time) = time else {
             sound = false;
             continue;

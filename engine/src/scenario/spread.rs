@@ -9,6 +9,9 @@ use super::{Distribution, Limited};
 use crate::diagnostic::{Diagnostic, Span};
 use crate::quantity::to_f64;
 
+/// No spread of a logarithm is larger: people one standard deviation apart would differ twenty-thousandfold.
+pub(super) const LARGEST_LOG_SD: f64 = 10.0;
+
 /// Reads the keys that the distribution takes, and its limits.
 pub(super) fn limited(
     reader: &mut Reader,
@@ -195,9 +198,9 @@ fn lognormal(reader: &mut Reader, section: &Section, frame: &mut Frame) -> Optio
     if log_sd == 0.0 {
         return Some(Distribution::Fixed { value });
     }
-    let sensible = median > 0.0 && log_sd.is_finite();
+    let sensible = median > 0.0 && log_sd <= LARGEST_LOG_SD;
     if !sensible {
-        reader.report(Diagnostic::error(section.span, "the spread is beyond all measure"));
+        reader.report(super::reader::beyond(section.span, "the spread"));
     }
     sensible.then_some(Distribution::Lognormal { median, log_sd })
 }
