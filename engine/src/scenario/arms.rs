@@ -1,8 +1,9 @@
 //! Reads the arms and their dose rows. What amounts are counted in is settled here, by the first amount of the file.
 
 use super::document::{Node, Value};
+use super::measure::{Measured, Wants};
 use super::population::Covariates;
-use super::reader::{Measured, Reader, Section, Wants};
+use super::reader::{Reader, Section};
 use super::schedule;
 use super::{Amount, AmountUnit, Arm, Dose, Limited, Route};
 use crate::diagnostic::{Diagnostic, Span};

@@ -4,8 +4,9 @@ use num_traits::{Signed, Zero};
 
 use super::document::{Entry, Node, Value};
 use super::fields::{Kind, quoted};
+use super::measure::{Measured, Wants};
 use super::nearest::nearest;
-use super::reader::{Measured, Reader, Section, Wants};
+use super::reader::{Reader, Section};
 use super::spread::limited;
 use super::{Covariate, Spread};
 use crate::diagnostic::{Diagnostic, Span};

@@ -1,10 +1,11 @@
 //! Reads what covariates do to a parameter: factors in `scale`, terms in `plus`.
 
 use super::covariates::with_near;
+use super::measure::Wants;
 use super::nearest::nearest;
 use super::population::Covariates;
 use super::portable::{exp, ln};
-use super::reader::{Reader, Section, Wants};
+use super::reader::{Reader, Section};
 use super::roles::Kind;
 use super::{Additive, Covariate, Factor, Limited, Parameter, Spread};
 use crate::diagnostic::{Diagnostic, Span};
@@ -179,7 +180,7 @@ fn numeric(
             }
             let (exponent, span) = exponent?;
             if exponent.abs() > LARGEST_EXPONENT {
-                reader.report(super::reader::beyond(span, "exponent"));
+                reader.report(super::measure::beyond(span, "exponent"));
                 return None;
             }
             Factor::Power { covariate, reference: reference?, exponent }

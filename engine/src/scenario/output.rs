@@ -4,7 +4,8 @@ use num_traits::Zero;
 
 use super::document::{Entry, Node, Table, Value};
 use super::fields::Kind;
-use super::reader::{Measured, Reader, Section, Wants};
+use super::measure::{Measured, Wants};
+use super::reader::{Reader, Section};
 use super::schedule::rises;
 use super::{AmountUnit, Window};
 use crate::diagnostic::{Diagnostic, Span};

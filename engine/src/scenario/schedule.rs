@@ -4,7 +4,8 @@ use num_traits::{ToPrimitive, Zero};
 
 use super::arms::MOST_DOSES;
 use super::document::Value;
-use super::reader::{Reader, Section, Wants};
+use super::measure::Wants;
+use super::reader::{Reader, Section};
 use crate::diagnostic::{Diagnostic, Span};
 use crate::quantity::{Dimension, Exact};
 

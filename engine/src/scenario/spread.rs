@@ -3,8 +3,9 @@
 
 use super::chance::LEAST_HELD;
 use super::covariates::{Frame, one_of, only};
+use super::measure::Measured;
 use super::portable::{NORMAL_95, ln};
-use super::reader::{Measured, Reader, Section};
+use super::reader::{Reader, Section};
 use super::{Distribution, Limited};
 use crate::diagnostic::{Diagnostic, Span};
 use crate::quantity::to_f64;
@@ -200,7 +201,7 @@ fn lognormal(reader: &mut Reader, section: &Section, frame: &mut Frame) -> Optio
     }
     let sensible = median > 0.0 && log_sd <= LARGEST_LOG_SD;
     if !sensible {
-        reader.report(super::reader::beyond(section.span, "the spread"));
+        reader.report(super::measure::beyond(section.span, "the spread"));
     }
     sensible.then_some(Distribution::Lognormal { median, log_sd })
 }

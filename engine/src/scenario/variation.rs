@@ -1,8 +1,9 @@
 //! Reads how a parameter varies between subjects, and the limits of its individual values.
 
 use super::chance::{LEAST_HELD, normal_between};
+use super::measure::{Wants, beyond};
 use super::portable::ln;
-use super::reader::{Reader, Section, Wants, beyond};
+use super::reader::{Reader, Section};
 use super::roles::Kind;
 use super::spread::{LARGEST_LOG_SD, exactly_one, limits as bounds};
 use super::{Role, Varies};
