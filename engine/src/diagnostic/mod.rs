@@ -22,6 +22,27 @@ pub struct Source {
     pub text: String,
 }
 
+impl Span {
+    /// The same characters, in a text where they start `by` bytes later.
+    #[must_use]
+    pub fn shifted(self, by: usize) -> Self {
+        Self { start: self.start + by, end: self.end + by }
+    }
+}
+
+impl Source {
+    /// Line and column of a byte, both from 1, columns in characters; a byte order mark counts for nothing.
+    pub fn position(&self, byte: usize) -> (usize, usize) {
+        let mut at = byte.min(self.text.len());
+        while !self.text.is_char_boundary(at) {
+            at -= 1;
+        }
+        let before = self.text[..at].trim_start_matches('\u{feff}');
+        let line_start = before.rfind('\n').map_or(0, |newline| newline + 1);
+        (before.matches('\n').count() + 1, before[line_start..].chars().count() + 1)
+    }
+}
+
 /// How bad it is.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
 pub enum Severity {
@@ -116,6 +137,21 @@ impl Diagnostic {
     }
 }
 
+impl Diagnostic {
+    /// The same diagnostic about a text that starts `by` bytes later, as when a value is read apart from its file.
+    #[must_use]
+    pub fn shifted(mut self, by: usize) -> Self {
+        self.span = self.span.map(|span| span.shifted(by));
+        for context in &mut self.context {
+            context.span = context.span.shifted(by);
+        }
+        if let Some(mend) = &mut self.mend {
+            mend.span = mend.span.shifted(by);
+        }
+        self
+    }
+}
+
 /// Why something could not be done. The caller turns each kind into an exit code in one place.
 #[derive(Debug)]
 pub enum Fault {
@@ -166,5 +202,27 @@ impl std::error::Error for Fault {
             Self::Io { cause, .. } => Some(cause),
             _ => None,
         }
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn position_counts_characters_and_passes_over_a_byte_order_mark() {
+        let source = Source { name: "s".into(), text: "\u{feff}a = 1\r\nµg = 2\n".into() };
+        assert_eq!(source.position(3), (1, 1));
+        assert_eq!(source.position(0), (1, 1));
+        let two = source.text.find('2').expect("there is a 2");
+        assert_eq!(source.position(two), (2, 6));
+        assert_eq!(source.position(two - 5), (2, 1), "inside a character counts as its start");
+        assert_eq!(source.position(usize::MAX), (3, 1));
+    }
+
+    #[test]
+    fn a_fault_crosses_threads() {
+        fn check<T: Send + Sync + 'static>() {}
+        check::<Fault>();
     }
 }

@@ -7,6 +7,25 @@
 //! Time in h, amounts in mg (or \[IU\], or mol, see [`Drug::amount_unit`]), volume in L, rates in 1/h; a covariate is
 //! held in the unit in which its distribution was written ([`Covariate::unit`]).
 
+mod arms;
+mod chance;
+mod correlations;
+mod covariates;
+mod document;
+mod effects;
+pub mod fields;
+mod nearest;
+mod output;
+mod parameters;
+mod population;
+mod portable;
+mod read;
+mod reader;
+mod roles;
+mod schedule;
+mod spread;
+mod variation;
+
 use crate::diagnostic::{Diagnostic, Source};
 use crate::quantity::{Dimension, Exact, Unit};
 
@@ -44,6 +63,15 @@ pub struct Echo {
     pub key: String,
     /// The value taken.
     pub value: String,
+}
+
+/// Numbers given outside the file that stand in for the file's.
+#[derive(Clone, Copy, Debug, Default, PartialEq, Eq)]
+pub struct Overrides {
+    /// How many virtual patients, instead of `population.size`.
+    pub size: Option<u64>,
+    /// Seed of every draw, instead of `population.seed`.
+    pub seed: Option<u64>,
 }
 
 /// Who is enrolled.
