@@ -41,6 +41,9 @@ impl Checked<'_> {
     fn spread(&self, quantity: &str) -> Option<String> {
         let (low, high) = (self.realised(quantity, "percentile 5")?, self.realised(quantity, "percentile 95")?);
         let unit = if low.unit == "1" { String::new() } else { format!(" {}", low.unit) };
+        if low.realised == high.realised {
+            return Some(format!("sampled {}{unit} for nearly everyone", significant(low.realised, 3)));
+        }
         let mut text = format!(
             "sampled 5th to 95th percentile {} to {}{unit}",
             significant(low.realised, 3),
@@ -257,6 +260,9 @@ fn effects(parameter: &Parameter, name: &str, unit: &str, covariates: &[Covariat
     }
     for factor in &parameter.factors {
         sentences.push(match *factor {
+            Factor::Power { covariate: which, reference, exponent: 1.0 } => {
+                format!("in proportion to {}, from {}", covariate(which), with_unit(reference, unit_of(which)))
+            }
             Factor::Power { covariate: which, reference, exponent } => format!(
                 "with {} to the power {} from {}: twice the {0} makes {name} {} times as large",
                 covariate(which),
@@ -304,7 +310,10 @@ fn arms(text: &mut String, checked: &Checked<'_>) {
             let _ = writeln!(text, "      {row}");
         }
         let (given, enters) = (with_unit(arm.given, unit), with_unit(arm.enters, unit));
-        let _ = writeln!(text, "      a typical patient is given {given} in all, of which {enters} reaches the blood");
+        let _ = writeln!(
+            text,
+            "      a patient with average covariates is given {given} in all, of which {enters} reaches the blood"
+        );
     }
     let _ = match names::window(scenario) {
         Some(window) => writeln!(text, "\nWindow: {window}; the limits belong to it"),
@@ -327,8 +336,7 @@ fn arms(text: &mut String, checked: &Checked<'_>) {
 
 fn work(text: &mut String, checked: &Checked<'_>) {
     let (explanation, limits) = (checked.explanation, checked.plan.limits());
-    let _ = writeln!(text, "\nSolver: {}", explanation.solver);
-    let _ = writeln!(text, "  {}", explanation.reason);
+    let _ = writeln!(text, "\nSolver: {}; {}", explanation.solver, explanation.reason);
     let _ = writeln!(
         text,
         "Work: {}, {}, {} over the population{}",
@@ -338,14 +346,7 @@ fn work(text: &mut String, checked: &Checked<'_>) {
             1 => "one pass".to_owned(),
             passes => format!("{passes} passes"),
         },
-        match explanation.pilots[..] {
-            [] => String::new(),
-            [ref before @ .., last] => {
-                let mut pilots: Vec<String> = before.iter().map(|patients| count(*patients)).collect();
-                pilots.push(counted(last, "patient"));
-                format!(" after a pilot of {}", listed(&pilots))
-            }
-        },
+        explanation.pilot.map_or_else(String::new, |pilot| format!(" after a pilot of {}", counted(pilot, "patient"))),
     );
     let _ = writeln!(
         text,
@@ -413,7 +414,7 @@ pub(crate) fn json(checked: &Checked<'_>) -> String {
             "values": explanation.values,
             "dose_shapes": explanation.shapes,
             "passes": explanation.passes,
-            "pilots": explanation.pilots,
+            "pilot_patients": explanation.pilot,
             "kept_bytes": explanation.kept_bytes,
             "memory_budget_bytes": limits.memory,
             "threads": limits.threads,
@@ -448,7 +449,7 @@ mod tests {
             shapes: 1,
             kept_bytes: 6 << 20,
             passes: 1,
-            pilots: vec![1000, 4000],
+            pilot: Some(4000),
             values: 3_380_000,
             seconds: 0.4,
         }
@@ -478,10 +479,10 @@ mod tests {
             "where sex is female: 0.85 times as large",
             "random parts of clearance and volume: correlation 0.5",
             "absorption 0.578 h and elimination 8.32 h",
-            "given 4200 mg in all, of which 3360 mg reaches the blood",
+            "a patient with average covariates is given 4200 mg in all, of which 3360 mg reaches the blood",
             "Window: 2 to 8 mg/L",
             "169 times from 0 to 168 h, 5th, 25th, 50th, 75th and 95th percentile in mg/L",
-            "one pass over the population after a pilot of 1,000 and 4,000 patients",
+            "one pass over the population after a pilot of 4,000 patients",
             "less than a second with 2 threads; keeps about 6MiB of the 1GiB it may",
             "variability.between_subject = true",
             "parameter uncertainty not included",
@@ -498,6 +499,7 @@ mod tests {
         let scenario = results.plan.scenario();
         let mut parameter = scenario.drug.parameters[0].clone();
         parameter.factors = vec![
+            Factor::Power { covariate: 0, reference: 70.0, exponent: 1.0 },
             Factor::Linear { covariate: 0, reference: 70.0, slope: 0.02 },
             Factor::Exponential { covariate: 0, reference: 70.0, rate: -0.01 },
         ];
@@ -506,6 +508,7 @@ mod tests {
             effects(&parameter, "clearance", "L/h", &scenario.population.covariates),
             [
                 "plus 0.05 L/h for each kg of weight",
+                "in proportion to weight, from 70 kg",
                 "with weight, in a straight line: +2 % for each kg from 70 kg",
                 "with weight, compounding: -0.995 % for each kg from 70 kg",
             ]
@@ -519,11 +522,5 @@ mod tests {
         assert_eq!(value["arms"][0]["given"], 4200.0);
         assert_eq!(value["sampled"][0]["statistic"], "mean");
         assert_eq!(value["work"]["threads"], 2);
-    }
-
-    #[test]
-    #[ignore = "shows the sentences to a person"]
-    fn look_at_it() {
-        crate::printer::Printer::of_this_process().out(&with(text)).unwrap();
     }
 }

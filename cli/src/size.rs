@@ -2,6 +2,8 @@
 
 use std::fmt;
 
+use crate::numbers::significant;
+
 /// A number of bytes.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
 pub(crate) struct Size(pub(crate) u64);
@@ -42,11 +44,10 @@ pub(crate) fn parse(text: &str) -> Result<Size, String> {
 }
 
 impl fmt::Display for Size {
-    /// In the largest binary unit of which there is at least one, with up to two decimals: "1GiB", "1.5MiB".
+    /// In the largest binary unit of which there is at least one, with three significant digits: "1GiB", "1.5MiB".
     fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
         let &(name, bytes) = UNITS[..5].iter().rev().find(|(_, bytes)| self.0 >= *bytes).unwrap_or(&UNITS[0]);
-        let text = format!("{:.2}", self.0 as f64 / bytes as f64);
-        write!(f, "{}{name}", text.trim_end_matches('0').trim_end_matches('.'))
+        write!(f, "{}{name}", significant(self.0 as f64 / bytes as f64, if self.0 / bytes < 1000 { 3 } else { 4 }))
     }
 }
 

@@ -5,8 +5,8 @@ use std::fmt::Write;
 use std::path::Path;
 
 use neap_engine::quantity::to_f64;
-use neap_engine::run::{ArmResult, AtTime, Counts, Results};
-use neap_engine::scenario::Arm;
+use neap_engine::run::{ArmResult, AtTime, Band, Counts, Results};
+use neap_engine::scenario::{Arm, Window};
 use neap_engine::tables::{
     BANDS, BANDS_METHOD, CAUTIONS, PARAMETER_UNCERTAINTY, PATIENTS, POPULATION, RUN_JSON, SHARES, SHARES_METHOD, Share,
     VERSION, names,
@@ -86,20 +86,19 @@ pub(crate) fn text(results: &Results, folder: &Path, patients_table: bool, look:
         if scenario.between_subject { "" } else { ", between-subject variability off" },
     );
     let window = names::window(scenario);
-    let _ = match &window {
-        Some(window) => writeln!(
-            text,
-            "\nShare of patients below, within and above the window of {window},\neach with its 95 % Monte Carlo interval"
-        ),
-        None => {
-            writeln!(text, "\nNo window, so no shares: percentiles in {unit}, each with its 95 % Monte Carlo interval")
-        }
+    let shown = match &window {
+        Some(window) => format!("Share of patients below, within and above the window of {window}"),
+        None => format!("No window, so no shares: percentiles in {unit}"),
     };
+    let _ = write!(text, "\n{}", wrapped(&format!("{shown}, each with its 95 % Monte Carlo interval"), width, 0));
     let frame = Frame::of(results.arms.iter().map(|arm| &arm.times[..]), names::window_limits(scenario), unit, look);
     for (arm, result) in scenario.arms.iter().zip(&results.arms) {
         let _ = writeln!(text, "\n{}\n", result.name);
         let moments = moments(arm, result);
-        text += &if window.is_some() { shares(&moments, results.patients) } else { percentiles(&moments) };
+        text += &match &scenario.window {
+            Some(window) => shares(&moments, results.patients, window),
+            None => percentiles(&moments),
+        };
         let reasons: Vec<String> =
             moments.iter().map(|moment| format!("{} is {}", hours(moment.at.time_h), moment.why)).collect();
         let _ = write!(text, "\n{}", wrapped(&format!("{}.", reasons.join("; ")), width, 2));
@@ -134,19 +133,18 @@ fn hours(time: f64) -> String {
     format!("{} h", significant(time, 6))
 }
 
-/// One line a time, three cells.
-fn shares(moments: &[Moment<'_>], patients: u64) -> String {
-    let mut text = format!("  {:>8}  {:<22}  {:<22}  {}\n", "", "below", "within", "above");
-    for moment in moments {
-        let counts = moment.at.shares.unwrap_or_default();
-        let cell = |count: u64| {
-            let share = Share::of(count, patients);
-            percent(share.value, share.lower, share.upper)
-        };
-        let (below, within, above) = (cell(counts.below), cell(counts.within), cell(counts.above));
-        let _ = writeln!(text, "  {:>8}  {below:<22}  {within:<22}  {above}", hours(moment.at.time_h));
-    }
-    text
+/// One line a time, one cell for each part that the window has.
+fn shares(moments: &[Moment<'_>], patients: u64, window: &Window) -> String {
+    let parts = |counts| Share::parts(counts, patients, window);
+    let heads: Vec<String> = ["below", "within", "above"]
+        .into_iter()
+        .zip(parts(Counts::default()))
+        .filter_map(|(head, part)| part.map(|_| head.to_owned()))
+        .collect();
+    aligned(&heads, moments, |at| {
+        let shares = parts(at.shares.unwrap_or_default()).into_iter().flatten();
+        shares.map(|share| percent(share.value, share.lower, share.upper)).collect()
+    })
 }
 
 /// One line a time, one cell for the lowest, the middle and the highest percentile.
@@ -154,23 +152,27 @@ fn percentiles(moments: &[Moment<'_>]) -> String {
     let Some(first) = moments.first() else { return String::new() };
     let mut shown = vec![0, nearest_to_half(first.at), first.at.bands.len().saturating_sub(1)];
     shown.dedup();
-    let mut text = format!("  {:>8}", "");
-    for &index in &shown {
-        let _ = write!(text, "  {:<22}", percentile_name(first.at.bands[index].percentile));
-    }
-    text.truncate(text.trim_end().len());
-    text.push('\n');
-    for moment in moments {
-        let mut line = format!("  {:>8}", hours(moment.at.time_h));
-        for &index in &shown {
-            let band = moment.at.bands[index];
-            let cell = match (band.mc_lower, band.mc_upper) {
-                (Some(low), Some(high)) => {
-                    format!("{} ({} to {})", significant(band.value, 3), significant(low, 3), significant(high, 3))
-                }
-                _ => format!("{} (too few patients)", significant(band.value, 3)),
-            };
-            let _ = write!(line, "  {cell:<22}");
+    let heads: Vec<String> = shown.iter().map(|&index| percentile_name(first.at.bands[index].percentile)).collect();
+    let cell = |band: &Band| match (band.mc_lower, band.mc_upper) {
+        (Some(low), Some(high)) => {
+            format!("{} ({} to {})", significant(band.value, 3), significant(low, 3), significant(high, 3))
+        }
+        _ => format!("{} (too few)", significant(band.value, 3)),
+    };
+    let text = aligned(&heads, moments, |at| shown.iter().map(|&index| cell(&at.bands[index])).collect());
+    if text.contains("(too few)") { text + "  (too few): too few patients for an interval\n" } else { text }
+}
+
+/// A line of heads, then a line a time; columns as wide as their widest cell.
+fn aligned(heads: &[String], moments: &[Moment<'_>], cells: impl Fn(&AtTime) -> Vec<String>) -> String {
+    let mut lines = vec![(String::new(), heads.to_vec())];
+    lines.extend(moments.iter().map(|moment| (hours(moment.at.time_h), cells(moment.at))));
+    let width = |column: usize| lines.iter().map(|(_, cells)| cells[column].chars().count()).max().unwrap_or(0);
+    let mut text = String::new();
+    for (time, cells) in &lines {
+        let mut line = format!("  {time:>8}");
+        for (column, cell) in cells.iter().enumerate() {
+            let _ = write!(line, "  {cell:<width$}", width = width(column));
         }
         let _ = writeln!(text, "{}", line.trim_end());
     }
@@ -187,8 +189,7 @@ fn files(results: &Results, patients_table: bool) -> Vec<&'static str> {
 /// The summary for programs: the same facts.
 pub(crate) fn json(results: &Results, folder: &Path, patients_table: bool) -> String {
     let scenario = results.plan.scenario();
-    let share = |count: u64| {
-        let share = Share::of(count, results.patients);
+    let share = |share: Share| {
         json!({
             "share": share.value,
             "standard_error": share.standard_error,
@@ -197,8 +198,11 @@ pub(crate) fn json(results: &Results, folder: &Path, patients_table: bool) -> St
         })
     };
     let moment = |moment: &Moment<'_>| {
-        let shares = |counts: Counts| json!({ "below": share(counts.below), "within": share(counts.within), "above": share(counts.above) });
-        let band = |band: &neap_engine::run::Band| {
+        let shares = |(counts, window)| {
+            let [below, within, above] = Share::parts(counts, results.patients, window).map(|part| part.map(share));
+            json!({ "below": below, "within": within, "above": above })
+        };
+        let band = |band: &Band| {
             json!({
                 "percentile": band.percentile,
                 "value": band.value,
@@ -209,7 +213,7 @@ pub(crate) fn json(results: &Results, folder: &Path, patients_table: bool) -> St
         json!({
             "time_h": moment.at.time_h,
             "why": moment.why,
-            "shares": moment.at.shares.map_or(Value::Null, shares),
+            "shares": moment.at.shares.zip(scenario.window.as_ref()).map(shares),
             "bands": moment.at.bands.iter().map(band).collect::<Vec<_>>(),
         })
     };
@@ -283,9 +287,13 @@ mod tests {
     #[test]
     fn shares_have_intervals_and_fit_eighty_columns() {
         let results = testing::results();
-        let line = shares(&moments(&results.plan.scenario().arms[0], &results.arms[0]), results.patients);
+        let scenario = results.plan.scenario();
+        let moments = moments(&scenario.arms[0], &results.arms[0]);
+        let line = shares(&moments, results.patients, scenario.window.as_ref().unwrap());
         assert!(line.lines().all(|line| line.chars().count() <= 80), "{line}");
         assert_eq!(line.matches(" % (").count(), 9, "{line}");
+        let line = shares(&moments, results.patients, &Window { low: Some(2.0), high: None });
+        assert!(!line.contains("above"), "nobody can be above an open side: {line}");
     }
 
     #[test]
@@ -322,11 +330,5 @@ mod tests {
         assert!(value["arms"][0]["times"][0]["shares"]["within"]["mc_lower"].is_f64());
         assert_eq!(value["files"][3], "patients.parquet");
         assert_eq!(value["parameter_uncertainty"], PARAMETER_UNCERTAINTY);
-    }
-
-    #[test]
-    #[ignore = "shows the summary to a person"]
-    fn look_at_it() {
-        crate::printer::Printer::of_this_process().out(&shown(&testing::results())).unwrap();
     }
 }

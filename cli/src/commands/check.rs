@@ -5,8 +5,8 @@ use neap_engine::plan::Plan;
 
 use crate::args::{CheckOptions, Format};
 use crate::printer::Printer;
+use crate::scenario;
 use crate::sentences::{self, Checked};
-use crate::{scenario, session};
 
 /// Patients drawn to show the population: enough for the percentiles shown, drawn in well under a second.
 const SAMPLE: u64 = 10_000;
@@ -17,7 +17,7 @@ pub(crate) fn run(options: &CheckOptions, printer: &Printer) -> Result<(), Fault
     let limits = options.common.limits();
     let plan = Plan::new(scenario, &limits)?;
     let sampled = SAMPLE.min(plan.scenario().population.size);
-    let population = session::during(&limits, printer.look(), |_| Ok(plan.sample(sampled)))?;
+    let population = plan.sample(sampled);
     let explanation = plan.explain();
     let checked = Checked { plan: &plan, explanation: &explanation, population: &population, sampled };
     printer.out(&match options.common.format {

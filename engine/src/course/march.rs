@@ -102,6 +102,7 @@ impl March {
     pub fn advance(&mut self, timetable: &Timetable, index: usize) {
         let step = (index > 0).then(|| timetable.steps[index - 1]);
         let mut here: Option<usize> = None;
+        let per_volume = &self.rates.per_volume;
         for (track, state) in timetable.tracks.iter().zip(&mut self.states) {
             if index < track.first {
                 continue;
@@ -118,10 +119,10 @@ impl March {
                     }
                 };
                 match (track.oral, self.structure.peripheral.is_some()) {
-                    (false, false) => advance_c(matrix, state),
-                    (true, false) => advance_gc(matrix, state),
-                    (false, true) => advance_cp(matrix, state),
-                    (true, true) => advance_gcp(matrix, state),
+                    (false, false) => advance_c(matrix, per_volume, state),
+                    (true, false) => advance_gc(matrix, per_volume, state),
+                    (false, true) => advance_cp(matrix, per_volume, state),
+                    (true, true) => advance_gcp(matrix, per_volume, state),
                 }
             }
             state.started = true;
@@ -135,13 +136,16 @@ impl March {
                 infused: &mut self.infused,
                 entry: &self.entry,
             };
+            let mut entered = !track.folds[index].is_empty();
             for fold in &track.folds[index] {
                 folding.fold(track, fold, state);
             }
             if !track.lagged.is_empty() {
-                folding.lagged(track, &timetable.times, index, &self.lag, state);
+                entered |= folding.lagged(track, &timetable.times, index, &self.lag, state);
             }
-            multiply(&state.central, &self.rates.per_volume, &mut state.concentration);
+            if entered {
+                multiply(&state.central, per_volume, &mut state.concentration);
+            }
         }
     }
 
@@ -226,7 +230,8 @@ impl Folding<'_> {
     }
 
     /// Doses whose lag of each lane's own brings them in since the output time before.
-    fn lagged(&mut self, track: &Track, times: &[f64], index: usize, lag: &Row, state: &mut State) {
+    /// Says whether any may have.
+    fn lagged(&mut self, track: &Track, times: &[f64], index: usize, lag: &Row, state: &mut State) -> bool {
         let now = times[index];
         let before = if index == 0 { f64::NEG_INFINITY } else { times[index - 1] };
         let (shortest, longest) = lag.iter().fold((f64::INFINITY, 0.0f64), |(a, b), &l| (a.min(l), b.max(l)));
@@ -234,7 +239,9 @@ impl Folding<'_> {
         while state.pending < track.lagged.len() && track.lagged[state.pending] + longest <= before {
             state.pending += 1;
         }
+        let mut entered = false;
         for &dose in track.lagged[state.pending..].iter().take_while(|&&dose| dose + shortest <= now) {
+            entered = true;
             let mut ago = Row::ZERO;
             let mut entering = Row::ZERO;
             enters(dose, lag, before, now, self.entry, &mut ago, &mut entering);
@@ -245,6 +252,7 @@ impl Folding<'_> {
                 add_product(&mut state.peripheral, &entering, &self.matrix.pg);
             }
         }
+        entered
     }
 }
 
@@ -259,38 +267,57 @@ fn enters(dose: f64, lag: &Row, before: f64, now: f64, entry: &Row, ago: &mut Ro
     }
 }
 
+// The loops below read all they need before they write: rows lie 2 KiB apart, and a load that follows a store to the same place in
+// another page waits for it.
+
 #[multiversion(targets("x86_64+avx512f+avx512bw+avx512dq+avx512vl", "x86_64+avx2"))]
-fn advance_c(m: &Step, state: &mut State) {
+fn advance_c(m: &Step, per_volume: &Row, state: &mut State) {
     for lane in 0..LANES {
-        state.central.0[lane] *= m.cc.0[lane];
+        let central = m.cc.0[lane] * state.central.0[lane];
+        let concentration = central * per_volume.0[lane];
+        state.central.0[lane] = central;
+        state.concentration.0[lane] = concentration;
     }
 }
 
 #[multiversion(targets("x86_64+avx512f+avx512bw+avx512dq+avx512vl", "x86_64+avx2"))]
-fn advance_gc(m: &Step, state: &mut State) {
+fn advance_gc(m: &Step, per_volume: &Row, state: &mut State) {
     for lane in 0..LANES {
         let (g, c) = (state.gut.0[lane], state.central.0[lane]);
-        state.gut.0[lane] = m.gg.0[lane] * g;
-        state.central.0[lane] = m.cc.0[lane] * c + m.cg.0[lane] * g;
+        let gut = m.gg.0[lane] * g;
+        let central = m.cc.0[lane] * c + m.cg.0[lane] * g;
+        let concentration = central * per_volume.0[lane];
+        state.gut.0[lane] = gut;
+        state.central.0[lane] = central;
+        state.concentration.0[lane] = concentration;
     }
 }
 
 #[multiversion(targets("x86_64+avx512f+avx512bw+avx512dq+avx512vl", "x86_64+avx2"))]
-fn advance_cp(m: &Step, state: &mut State) {
+fn advance_cp(m: &Step, per_volume: &Row, state: &mut State) {
     for lane in 0..LANES {
         let (c, p) = (state.central.0[lane], state.peripheral.0[lane]);
-        state.central.0[lane] = m.cc.0[lane] * c + m.cp.0[lane] * p;
-        state.peripheral.0[lane] = m.pp.0[lane] * p + m.pc.0[lane] * c;
+        let central = m.cc.0[lane] * c + m.cp.0[lane] * p;
+        let peripheral = m.pp.0[lane] * p + m.pc.0[lane] * c;
+        let concentration = central * per_volume.0[lane];
+        state.central.0[lane] = central;
+        state.peripheral.0[lane] = peripheral;
+        state.concentration.0[lane] = concentration;
     }
 }
 
 #[multiversion(targets("x86_64+avx512f+avx512bw+avx512dq+avx512vl", "x86_64+avx2"))]
-fn advance_gcp(m: &Step, state: &mut State) {
+fn advance_gcp(m: &Step, per_volume: &Row, state: &mut State) {
     for lane in 0..LANES {
         let (g, c, p) = (state.gut.0[lane], state.central.0[lane], state.peripheral.0[lane]);
-        state.gut.0[lane] = m.gg.0[lane] * g;
-        state.central.0[lane] = (m.cc.0[lane] * c + m.cp.0[lane] * p) + m.cg.0[lane] * g;
-        state.peripheral.0[lane] = (m.pp.0[lane] * p + m.pc.0[lane] * c) + m.pg.0[lane] * g;
+        let gut = m.gg.0[lane] * g;
+        let central = (m.cc.0[lane] * c + m.cp.0[lane] * p) + m.cg.0[lane] * g;
+        let peripheral = (m.pp.0[lane] * p + m.pc.0[lane] * c) + m.pg.0[lane] * g;
+        let concentration = central * per_volume.0[lane];
+        state.gut.0[lane] = gut;
+        state.central.0[lane] = central;
+        state.peripheral.0[lane] = peripheral;
+        state.concentration.0[lane] = concentration;
     }
 }
 

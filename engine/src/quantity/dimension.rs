@@ -70,9 +70,11 @@ impl Dimension {
             (self.time, "time"),
         ];
         let above: Vec<String> = parts.iter().filter(|part| part.0 > 0).map(|&(p, word)| powered(word, p)).collect();
-        let below: String =
-            parts.iter().filter(|part| part.0 < 0).map(|&(p, word)| format!(" per {}", powered(word, -p))).collect();
-        let name = format!("{}{below}", above.join(" times "));
+        let mut name = above.join(" times ");
+        for &(power, word) in parts.iter().filter(|part| part.0 < 0) {
+            name.push_str(" per ");
+            name.push_str(&powered(word, -power));
+        }
         let indexed = match self.indexed {
             0 => "",
             1.. => " indexed to 1.73 m2",

@@ -68,9 +68,9 @@ impl Quantity {
     /// use neap_engine::quantity::Quantity;
     /// let half = Quantity::parse("0.5 g")?;
     /// assert_eq!(half.in_base(), Quantity::parse("500mg")?.in_base());
-    /// # Ok::<(), neap_engine::diagnostic::Diagnostic>(())
+    /// # Ok::<(), Box<neap_engine::diagnostic::Diagnostic>>(())
     /// ```
-    pub fn parse(text: &str) -> Result<Self, Diagnostic> {
+    pub fn parse(text: &str) -> Result<Self, Box<Diagnostic>> {
         let (value, unit_at) = number::leading(text)?;
         let unit = Unit::parse_part(text, unit_at)?;
         Ok(Self { value, unit })

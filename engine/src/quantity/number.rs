@@ -19,18 +19,18 @@ pub fn decimal(text: &str) -> Option<Exact> {
 }
 
 /// Reads the number at the start of `text`; gives it and where the unit starts, blanks passed over.
-pub(super) fn leading(text: &str) -> Result<(Exact, usize), Diagnostic> {
+pub(super) fn leading(text: &str) -> Result<(Exact, usize), Box<Diagnostic>> {
     let start = text.len() - text.trim_start().len();
     let parts = Parts::of(text, start);
     if parts.whole.is_empty() {
-        return Err(without_digits(text, start, &parts));
+        return Err(without_digits(text, start, &parts).into());
     }
     if let Some(mend) = grouped(text, start) {
-        return Err(mend);
+        return Err(mend.into());
     }
     if parts.point && parts.fraction.is_empty() {
         let at = Span { start, end: parts.end };
-        return Err(Diagnostic::error(at, "a digit must follow the decimal point").mend(at, parts.whole));
+        return Err(Diagnostic::error(at, "a digit must follow the decimal point").mend(at, parts.whole).into());
     }
     let digits = parts.whole.len() + parts.fraction.len();
     let exponent: Option<i32> = parts.exponent.map_or(Some(0), |text| text.parse().ok());
@@ -39,7 +39,8 @@ pub(super) fn leading(text: &str) -> Result<(Exact, usize), Diagnostic> {
         let at = Span { start, end: parts.end };
         return Err(Diagnostic::error(at, "this number is beyond all measure")
             .label("out of range")
-            .help(format!("Numbers have at most {MOST_DIGITS} digits and powers of ten up to {LARGEST_EXPONENT}.")));
+            .help(format!("Numbers have at most {MOST_DIGITS} digits and powers of ten up to {LARGEST_EXPONENT}."))
+            .into());
     };
     let places = i32::try_from(parts.fraction.len()).unwrap_or(i32::MAX);
     let digits: BigInt = format!("{}{}{}", parts.sign, parts.whole, parts.fraction).parse().unwrap_or_default();

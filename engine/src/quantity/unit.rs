@@ -34,36 +34,36 @@ impl Unit {
     /// use neap_engine::quantity::Unit;
     /// assert_eq!(Unit::parse("mL/min")?.dimension.name(), "volume per time");
     /// assert_eq!(Unit::parse("mcg").unwrap_err().mend.unwrap().replacement, "ug");
-    /// # Ok::<(), neap_engine::diagnostic::Diagnostic>(())
+    /// # Ok::<(), Box<neap_engine::diagnostic::Diagnostic>>(())
     /// ```
-    pub fn parse(text: &str) -> Result<Self, Diagnostic> {
+    pub fn parse(text: &str) -> Result<Self, Box<Diagnostic>> {
         let unit = Self::parse_part(text, text.len() - text.trim_start().len())?;
         if unit.text.is_empty() {
             let at = Span { start: 0, end: text.len() };
-            return Err(Diagnostic::error(at, "a unit is missing").help("A pure number has the unit `1`."));
+            return Err(Diagnostic::error(at, "a unit is missing").help("A pure number has the unit `1`.").into());
         }
         Ok(unit)
     }
 
     /// Reads the unit that fills `text` from `start`; the empty unit is a pure number.
-    pub(super) fn parse_part(text: &str, start: usize) -> Result<Self, Diagnostic> {
+    pub(super) fn parse_part(text: &str, start: usize) -> Result<Self, Box<Diagnostic>> {
         let end = text.trim_end().len().max(start);
         let written = &text[start..end];
         if written.is_empty() {
             return Ok(Self { text: String::new(), dimension: Dimension::NONE, factor: Exact::one() });
         }
         if let Some(fault) = foreign_marks(written) {
-            return Err(fault.shifted(start));
+            return Err(fault.shifted(start).into());
         }
         let mut factor = Exact::one();
         let mut dimension = Dimension::NONE;
         for (at, divided, part) in Parts::new(written) {
-            let (one, of) = component(part).map_err(|fault| fault.shifted(start + at))?;
+            let (one, of) = component(part).map_err(|fault| Box::new(fault.shifted(start + at)))?;
             factor = if divided { factor / one } else { factor * one };
             dimension = if divided { dimension.per(of) } else { dimension.times(of) };
             if !dimension.within(HIGHEST_DIMENSION) {
                 let at = Span { start, end };
-                return Err(Diagnostic::error(at, "this unit has absurdly high powers"));
+                return Err(Diagnostic::error(at, "this unit has absurdly high powers").into());
             }
         }
         Ok(Self { text: written.to_owned(), dimension, factor })
@@ -105,10 +105,10 @@ impl<'t> Iterator for Parts<'t> {
 }
 
 /// One symbol with its power.
-fn component(text: &str) -> Result<(Exact, Dimension), Diagnostic> {
+fn component(text: &str) -> Result<(Exact, Dimension), Box<Diagnostic>> {
     if text.is_empty() {
         let at = Span { start: 0, end: 0 };
-        return Err(Diagnostic::error(at, "a unit is missing here").label("nothing to multiply or divide by"));
+        return Err(Diagnostic::error(at, "a unit is missing here").label("nothing to multiply or divide by").into());
     }
     if text == INDEXED {
         return Ok((Exact::one(), Dimension { indexed: -1, ..Dimension::NONE }));
@@ -119,7 +119,7 @@ fn component(text: &str) -> Result<(Exact, Dimension), Diagnostic> {
     let length = text.find(|c: char| c.is_ascii_digit() || c == '-' || c == '+').unwrap_or(text.len());
     let (name, power) = text.split_at(length);
     let Some((factor, dimension)) = symbol::meaning(name) else {
-        return Err(unknown(name, text));
+        return Err(unknown(name, text).into());
     };
     let power = if power.is_empty() { Ok(1) } else { power.parse::<i8>() };
     match power {
@@ -129,7 +129,7 @@ fn component(text: &str) -> Result<(Exact, Dimension), Diagnostic> {
         _ => {
             let at = Span { start: length, end: text.len() };
             let wanted = format!("a power is a whole number from 1 to {HIGHEST_POWER}, or its negative");
-            Err(Diagnostic::error(at, wanted).help("Write `m2`, `h-1` or `/h`."))
+            Err(Diagnostic::error(at, wanted).help("Write `m2`, `h-1` or `/h`.").into())
         }
     }
 }

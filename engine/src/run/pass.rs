@@ -78,8 +78,9 @@ pub(super) struct Absorb<'a> {
 }
 
 impl<'a> Absorb<'a> {
-    pub(super) fn new(aims: &'a Aims) -> Self {
-        Self { aims, partial: Partial::new(&aims.searches, aims.centres.len()), lanes: 0 }
+    /// Nothing yet, with room for what `patients` patients are expected to leave.
+    pub(super) fn new(aims: &'a Aims, patients: u64) -> Self {
+        Self { aims, partial: Partial::new(&aims.searches, aims.centres.len(), patients), lanes: 0 }
     }
 
     /// Tells how many lanes of the next block are patients.

@@ -112,7 +112,10 @@ fn route(reader: &mut Reader, section: &Section, draft: &mut Draft) -> Option<Ro
         return Some(Route::Infusion { over });
     }
     if let Some(over) = over {
-        let fault = Diagnostic::error(over.key_span, format!("`over` has no place in a dose that is {word}"));
+        let fault = Diagnostic::error(
+            over.key_span,
+            format!("`over` has no place in {}", if word == "bolus" { "a bolus" } else { "an oral dose" }),
+        );
         let fault = fault.label("not used").context(at, "given at once");
         reader.report(fault.help("A dose given over a time has route = \"infusion\"."));
         return None;
@@ -129,8 +132,7 @@ fn amount(reader: &mut Reader, section: &Section, covariates: &mut Covariates, d
     };
     let entry = section.get("amount")?;
     if let Value::Table(_) = entry.node.value {
-        let about = "An amount in bands of a covariate";
-        reader.later("amount", entry.node.span, about);
+        reader.later("amount in bands", entry.node.span);
         return None;
     }
     let Some((index, at)) = per else {

@@ -94,7 +94,7 @@ pub(super) fn read_own(reader: &mut Reader, known: &mut Known) {
 /// The distribution's name; a missing one is told of.
 fn distribution(reader: &mut Reader, section: &Section) -> Option<&'static str> {
     if !section.has("distribution") {
-        reader.missing(section.at, section.span, "distribution");
+        reader.missing(section, "distribution");
         return None;
     }
     reader.word(section, "distribution")
@@ -115,7 +115,7 @@ pub(super) fn only(reader: &mut Reader, section: &Section, distribution: &str, k
 }
 
 /// Reads a covariate that follows the classes of another one, which has been read before.
-pub(super) fn read_by_class<'t>(reader: &mut Reader, list: &mut [Known<'t>], index: usize) {
+pub(super) fn read_by_class(reader: &mut Reader, list: &mut [Known], index: usize) {
     let section = list[index].section;
     if !section.has("by") || section.has("formula") {
         return;
@@ -169,13 +169,15 @@ fn each_class(
 ) -> Option<Vec<super::Limited>> {
     let Some((table, span)) = reader.table(section, "each") else {
         if !section.has("each") {
-            reader.missing(section.at, section.span, "each");
+            reader.missing(section, "each");
         }
         return None;
     };
+    let mut meant = Vec::new();
     for entry in table.entries.iter().filter(|entry| !classes.contains(&entry.key)) {
         let fault = Diagnostic::error(entry.key_span, format!("`{of}` has no class `{}`", entry.key));
         let near = nearest(&entry.key, classes.iter().map(String::as_str));
+        meant.push(near);
         reader.report_absent(with_near(fault.label("unknown class"), near, entry.key_span, false));
     }
     let mut read: Vec<(&Entry, Option<super::Limited>)> = Vec::new();
@@ -196,14 +198,14 @@ fn each_class(
     }
     let mut each = Vec::with_capacity(classes.len());
     for class in classes {
-        match read.iter().find(|(entry, _)| entry.key == *class) {
-            Some((_, own)) => each.push(*own),
-            None => {
+        if let Some((_, own)) = read.iter().find(|(entry, _)| entry.key == *class) {
+            each.push(*own);
+        } else {
+            if !meant.contains(&Some(class.as_str())) {
                 let said = format!("the class `{class}` of `{of}` has no distribution");
-                let fault = Diagnostic::error(span, said).label(format!("needs `each.{class}`"));
-                reader.report_absent(fault);
-                each.push(None);
+                reader.report_absent(Diagnostic::error(span, said).label(format!("needs `each.{class}`")));
             }
+            each.push(None);
         }
     }
     each.into_iter().collect()
@@ -224,7 +226,7 @@ pub(super) fn with_near(fault: Diagnostic, near: Option<&str>, at: Span, in_quot
 fn classes(reader: &mut Reader, name: &str, section: &Section) -> Option<Spread> {
     only(reader, section, "categories", &["proportions"]);
     let Some(entry) = section.get("proportions") else {
-        reader.missing(section.at, section.span, "proportions");
+        reader.missing(section, "proportions");
         return None;
     };
     let Value::Table(table) = &entry.node.value else {

@@ -41,11 +41,9 @@ pub(super) struct Number {
     pub(super) integer: Option<i128>,
 }
 
-/// A table: its header and its entries, in file order.
+/// A table: its entries, in file order.
 #[derive(Debug, Default)]
 pub(super) struct Table {
-    /// The header, or the braces of an inline table; `None` for the file itself.
-    pub(super) header: Option<Span>,
     pub(super) entries: Vec<Entry>,
 }
 
@@ -83,19 +81,49 @@ pub(super) fn read(source: &Source) -> (Table, Vec<Diagnostic>) {
     if let Some(fault) = too_deep(&source.text) {
         return (Table::default(), vec![fault]);
     }
-    let (root, errors) = DeTable::parse_recoverable(&source.text);
+    let mut text = source.text.clone();
     let mut faults: Vec<Diagnostic> = Vec::new();
-    for error in errors {
-        let fault = form_fault(&source.text, error.message(), error.span());
-        // One slip often upsets the reader more than once at the same place.
-        if !faults.iter().any(|other| other.span == fault.span) {
+    loop {
+        let (root, errors) = DeTable::parse_recoverable(&text);
+        let mut blanked = text.clone();
+        for error in &errors {
+            let fault = form_fault(&source.text, error.message(), error.span());
+            // One slip often upsets the reader more than once at the same place.
+            if faults.iter().any(|other| other.span == fault.span) {
+                continue;
+            }
+            if let Some(at) = fault.span.filter(|_| ENDS_READING.contains(&kind_of(error.message()))) {
+                blank_line(&mut blanked, at.start);
+            }
             faults.push(fault);
         }
+        if blanked == text || faults.len() >= MOST_FAULTS {
+            return (table(root.get_ref(), &source.text), faults);
+        }
+        text = blanked;
     }
-    (table(root.get_ref(), None, &source.text), faults)
 }
 
-fn table(from: &DeTable, header: Option<Span>, text: &str) -> Table {
+/// Faults after which the reader of the format gives up: their line is blanked and the text read again, so that the
+/// lines below are judged too.
+const ENDS_READING: [&str; 2] = ["key with no value", "missing value for key"];
+/// After so many faults of form the text is taken for something else than a scenario.
+const MOST_FAULTS: usize = 20;
+
+/// The kind of fault, without what was expected instead.
+fn kind_of(message: &str) -> &str {
+    message.split(',').next().unwrap_or(message)
+}
+
+/// Writes blanks over a line; everything else keeps its place.
+fn blank_line(text: &mut String, at: usize) {
+    let at = at.min(text.len());
+    let start = text[..at].rfind('\n').map_or(0, |newline| newline + 1);
+    let end = text[start..].find('\n').map_or(text.len(), |newline| start + newline);
+    text.replace_range(start..end, &" ".repeat(end - start));
+}
+
+fn table(from: &DeTable, text: &str) -> Table {
     let mut entries: Vec<Entry> = from
         .iter()
         .map(|(key, value)| Entry {
@@ -105,7 +133,7 @@ fn table(from: &DeTable, header: Option<Span>, text: &str) -> Table {
         })
         .collect();
     entries.sort_by_key(|entry| entry.key_span.start);
-    Table { header, entries }
+    Table { entries }
 }
 
 fn node(from: &DeValue, at: Span, text: &str) -> Node {
@@ -115,15 +143,13 @@ fn node(from: &DeValue, at: Span, text: &str) -> Node {
             exact: i128::from_str_radix(number.as_str(), number.radix()).ok().map(|n| Exact::from_integer(n.into())),
             integer: i128::from_str_radix(number.as_str(), number.radix()).ok(),
         }),
-        DeValue::Float(number) => {
-            Value::Number(Number { text: number.as_str().to_owned(), exact: decimal(number.as_str()), integer: None })
-        }
+        DeValue::Float(number) => Value::Number(Number { exact: decimal(number.as_str()), integer: None }),
         DeValue::Boolean(flag) => Value::Flag(*flag),
         DeValue::Datetime(_) => Value::Moment,
         DeValue::Array(items) => {
             Value::List(items.iter().map(|item| node(item.get_ref(), span(item.span()), text)).collect())
         }
-        DeValue::Table(inner) => Value::Table(table(inner, Some(at), text)),
+        DeValue::Table(inner) => Value::Table(table(inner, text)),
     };
     Node { span: at, value }
 }

@@ -91,7 +91,7 @@ fn factor(reader: &mut Reader, section: &Section, covariates: &mut Covariates) -
     };
     let mut complete = true;
     for key in keys.iter().filter(|key| !section.has(key)) {
-        reader.missing(section.at, section.span, key);
+        reader.missing(section, key);
         complete = false;
     }
     if let Some(entry) = section.get("reference").filter(|_| !keys.contains(&"reference")) {
@@ -200,7 +200,7 @@ fn per_covariate(reader: &mut Reader, section: &Section, key: &str, of: Dimensio
 fn additive(reader: &mut Reader, section: &Section, kind: &Kind, covariates: &mut Covariates) -> Option<Additive> {
     let found = covariate(reader, section, covariates);
     if !section.has("slope") {
-        reader.missing(section.at, section.span, "slope");
+        reader.missing(section, "slope");
         return None;
     }
     let (covariate, found, at) = found?;

@@ -30,7 +30,7 @@ pub(super) fn window(
     settled: Option<Span>,
 ) -> WindowDraft {
     let Some((table, span)) = reader.table(root, "window") else {
-        if !root.has("window") {
+        if !root.has("window") && !root.meant("window") {
             let said = "there is no therapeutic window, so no shares below, within and above it";
             let fault = Diagnostic { span: None, ..Diagnostic::warning(Span { start: 0, end: 0 }, said) };
             reader.report_absent(fault.help("Add [window] with `low`, `high` or both."));
@@ -102,13 +102,11 @@ pub(super) fn variability(reader: &mut Reader, root: &Section) -> Option<bool> {
         return Some(true);
     };
     let section = reader.open("variability", table, span);
-    for (key, about) in
-        [("between_occasion", "Variability between occasions"), ("residual", "The model's unexplained error")]
-    {
+    for key in ["between_occasion", "residual"] {
         if reader.flag(&section, key) == Some(true)
             && let Some(entry) = section.get(key)
         {
-            reader.later(&format!("{key} = true"), entry.node.span, about);
+            reader.later(&format!("{key} = true"), entry.node.span);
         }
     }
     if !section.has("between_subject") {
@@ -130,12 +128,11 @@ pub(super) struct Draft {
 pub(super) fn output(reader: &mut Reader, table: &Table, span: Span) -> Draft {
     let section = reader.open("output", table, span);
     let times = section.get("times").and_then(|entry| times(reader, entry));
-    let percentiles = match section.get("percentiles") {
-        Some(entry) => percentiles(reader, entry),
-        None => {
-            reader.acted("output.percentiles", "[5, 25, 50, 75, 95]");
-            Some(PERCENTILES.iter().map(|p| Exact::from_integer((*p).into())).collect())
-        }
+    let percentiles = if let Some(entry) = section.get("percentiles") {
+        percentiles(reader, entry)
+    } else {
+        reader.acted("output.percentiles", format!("{PERCENTILES:?}"));
+        Some(PERCENTILES.iter().map(|p| Exact::from_integer((*p).into())).collect())
     };
     let patients = reader.flag(&section, "patients").unwrap_or(false);
     Draft { times, percentiles, patients }
@@ -235,15 +232,19 @@ fn part(reader: &mut Reader, item: &Node) -> Option<Vec<Exact>> {
     };
     let section = reader.open("output.times", table, item.span);
     let (from, to, step) = (reader.time(&section, "from"), reader.time(&section, "to"), reader.time(&section, "step"));
-    let ((from, _), (to, end), (step, stride)) = (from?, to?, step?);
-    if step.is_zero() {
-        reader.report(Diagnostic::error(stride, "`step` must be above zero").label("no step"));
-        return None;
-    }
+    let step = step.and_then(|(step, stride)| {
+        if step.is_zero() {
+            reader.report(Diagnostic::error(stride, "`step` must be above zero").label("no step"));
+            return None;
+        }
+        Some((step, stride))
+    });
+    let ((from, _), (to, end)) = (from?, to?);
     if to < from {
         reader.report(Diagnostic::error(end, "this range runs backwards").label("before `from`"));
         return None;
     }
+    let (step, stride) = step?;
     let steps = ((to - &from) / &step).floor();
     // Compared before it is counted: a short text can ask for more times than memory holds.
     if to_f64(&steps) >= MOST_TIMES as f64 {

@@ -83,12 +83,22 @@ fn one<'t>(
     covariates: &mut Covariates,
     demand: Demand,
 ) -> Option<Written<'t>> {
-    let kind = known(reader, entry, model)?;
+    let named = |name| Written { name, key_span: entry.key_span, parameter: None };
+    let kind = match known(reader, entry, model) {
+        Ok(kind) => kind,
+        // The name that was meant counts as written: its absence is no further fault.
+        Err(meant) => return meant.map(named),
+    };
     used(reader, entry, kind, model, demand);
-    let mut written = Written { name: &entry.key, key_span: entry.key_span, parameter: None };
+    let parameter = body(reader, entry, kind, covariates);
+    Some(Written { parameter, ..named(&entry.key) })
+}
+
+/// What a parameter's table says.
+fn body(reader: &mut Reader, entry: &Entry, kind: &Kind, covariates: &mut Covariates) -> Option<Parameter> {
     let Value::Table(table) = &entry.node.value else {
         reader.wrong_kind(&entry.key, FieldKind::Table, &entry.node);
-        return Some(written);
+        return None;
     };
     let section = reader.open("drug.parameter.*", table, entry.node.span);
     let effects = effects::read(reader, &section, kind, covariates);
@@ -107,16 +117,15 @@ fn one<'t>(
         high,
     };
     plausible(reader, &section, &entry.key, &parameter, covariates, typical.span);
-    written.parameter = Some(parameter);
-    Some(written)
+    Some(parameter)
 }
 
-/// The parameter that a name means.
-fn known(reader: &mut Reader, entry: &Entry, model: Option<Model>) -> Option<&'static Kind> {
+/// The parameter that a name means, or the known name that it was probably meant to be.
+fn known<'t>(reader: &mut Reader, entry: &'t Entry, model: Option<Model>) -> Result<&'static Kind, Option<&'t str>> {
     let (name, at) = (entry.key.as_str(), entry.key_span);
     if LATER_PARAMETERS.contains(&name) {
-        reader.later(name, at, "A parameter of models that this version does not have");
-        return None;
+        reader.later(name, at);
+        return Err(Some(name));
     }
     let wanted = match model {
         Some(Model::OneCompartment) => Some((ONE_VOLUME, "central_volume", "one compartment")),
@@ -130,20 +139,21 @@ fn known(reader: &mut Reader, entry: &Entry, model: Option<Model>) -> Option<&'s
         reader.report(Diagnostic::error(at, said).label(format!("not `{wrong}`")).mend(at, right));
     }
     let meant = if name == ONE_VOLUME { "central_volume" } else { name };
-    let kind = KINDS.iter().find(|kind| kind.name == meant);
-    if kind.is_none() {
-        let names = KINDS.iter().map(|kind| match model {
-            Some(model) => kind.role.name(model),
-            None => kind.name,
-        });
-        let fault = Diagnostic::error(at, format!("there is no parameter `{name}`")).label("unknown parameter");
-        let known: Vec<String> = names.clone().map(|name| format!("`{name}`")).collect();
-        reader.report(match nearest(name, names) {
-            Some(near) => fault.help(format!("Did you mean `{near}`?")).mend(at, near),
-            None => fault.help(format!("Known here: {}.", known.join(", "))),
-        });
+    if let Some(kind) = KINDS.iter().find(|kind| kind.name == meant) {
+        return Ok(kind);
     }
-    kind
+    let names = KINDS.iter().map(|kind| match model {
+        Some(model) => kind.role.name(model),
+        None => kind.name,
+    });
+    let fault = Diagnostic::error(at, format!("there is no parameter `{name}`")).label("unknown parameter");
+    let known: Vec<String> = names.clone().map(|name| format!("`{name}`")).collect();
+    let near = nearest(name, names);
+    reader.report(match near {
+        Some(near) => fault.help(format!("Did you mean `{near}`?")).mend(at, near),
+        None => fault.help(format!("Known here: {}.", known.join(", "))),
+    });
+    Err(near)
 }
 
 /// Refuses a parameter that nothing would use.

@@ -5,7 +5,7 @@ use super::document::{Table, Value};
 use super::fields;
 use super::nearest::nearest;
 use super::parameters::is_parameter_name;
-use super::reader::{Reader, Section};
+use super::reader::{Reader, Section, grouped};
 use super::{Overrides, Spread};
 use crate::diagnostic::{Diagnostic, Span};
 
@@ -28,6 +28,8 @@ pub(super) struct Draft<'t> {
 #[derive(Default)]
 pub(super) struct Covariates<'t> {
     pub(super) list: Vec<Known<'t>>,
+    /// Something names a covariate that is not there, so one that seems unused may be meant.
+    lost: bool,
 }
 
 impl Covariates<'_> {
@@ -37,6 +39,7 @@ impl Covariates<'_> {
             self.list[index].used = true;
             return Some(index);
         }
+        self.lost = true;
         let fault = Diagnostic::error(at, format!("there is no covariate `{name}`")).label("unknown covariate");
         let near = nearest(name, self.list.iter().map(|known| known.name));
         reader.report_absent(match near {
@@ -48,7 +51,10 @@ impl Covariates<'_> {
 
     /// Warns of covariates that nothing uses.
     pub(super) fn warn_unused(&self, reader: &mut Reader) {
-        for known in self.list.iter().filter(|known| !known.used) {
+        if self.lost {
+            return;
+        }
+        for known in self.list.iter().filter(|known| !known.used && known.covariate.is_some()) {
             let said = format!("nothing uses the covariate `{}`", known.name);
             reader.report_absent(Diagnostic::warning(known.key_span, said).label("unused"));
         }
@@ -78,13 +84,14 @@ fn counted(
     match instead {
         Some(given) if (least..=most).contains(&given) => Some(given),
         Some(_) => {
-            let said = format!("the {key} given outside the file must lie between {least} and {most}");
+            let said =
+                format!("the {key} given outside the file must lie between {} and {}", grouped(least), grouped(most));
             reader.report(Diagnostic { span: None, ..Diagnostic::error(section.span, said) });
             None
         }
         None => {
             if !section.has(key) {
-                reader.missing("population", section.span, key);
+                reader.missing(section, key);
             }
             written
         }
@@ -114,7 +121,7 @@ fn covariates<'t>(reader: &mut Reader, section: &Section<'t>) -> Covariates<'t> 
     for index in 0..list.len() {
         read_by_class(reader, &mut list, index);
     }
-    Covariates { list: ordered(list) }
+    Covariates { list: ordered(list), lost: false }
 }
 
 fn unknown(reader: &mut Reader, key: &str, at: Span) {

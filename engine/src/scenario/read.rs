@@ -149,6 +149,10 @@ fn top<'t>(reader: &mut Reader, root: &'t Table) -> Section<'t> {
 }
 
 fn version(reader: &mut Reader, root: &Section) {
+    if !root.has("neap") && !root.meant("neap") {
+        let fault = Diagnostic::error(TOP, "`neap`, the version of the format, is missing").label("starts here");
+        reader.report_absent(fault.help("A scenario starts with neap = 1."));
+    }
     let Some(version) = reader.count(root, "neap", 0, u64::MAX >> 1) else { return };
     if version != VERSION
         && let Some(entry) = root.get("neap")

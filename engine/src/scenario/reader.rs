@@ -5,7 +5,7 @@ use num_traits::{One, Zero};
 
 use super::Echo;
 use super::document::{Entry, Node, Table, Value};
-use super::fields::{self, Field, Kind, Need};
+use super::fields::{self, Kind, Need};
 use super::nearest::nearest;
 use crate::diagnostic::{Diagnostic, Span};
 use crate::quantity::{Dimension, Exact, Quantity, decimal, to_f64};
@@ -61,6 +61,19 @@ impl<'t> Section<'t> {
         self.table.get(key).is_some()
     }
 
+    /// Whether an unknown key of the table was probably meant to be this one.
+    pub(super) fn meant(&self, key: &str) -> bool {
+        self.table.entries.iter().any(|entry| {
+            fields::find(self.at, &entry.key).is_none()
+                && nearest(&entry.key, fields::of(self.at).map(|field| field.key)) == Some(key)
+        })
+    }
+
+    /// A key with the names of the tables that it stands in.
+    fn path(&self, key: &str) -> String {
+        if self.at.is_empty() { key.to_owned() } else { format!("{}.{key}", self.at) }
+    }
+
     fn kind(&self, key: &str) -> Kind {
         fields::find(self.at, key).map_or(Kind::Open, |field| field.kind)
     }
@@ -97,48 +110,59 @@ impl Reader {
 
     /// As [`Reader::open`], where keys that the field table does not know are names, which the caller reads.
     pub(super) fn open_named<'t>(&mut self, at: &'static str, table: &'t Table, span: Span) -> Section<'t> {
+        let section = Section { at, table, span };
         for entry in &table.entries {
-            if let Some(Field { need: Need::Later, about, .. }) = fields::find(at, &entry.key) {
-                self.later(&entry.key, entry.key_span, about);
+            if fields::find(at, &entry.key).is_some_and(|field| field.need == Need::Later) {
+                self.later(&entry.key, entry.key_span);
             }
         }
         for field in fields::of(at).filter(|field| field.need == Need::Required) {
-            if table.get(field.key).is_none() && at != "population" {
-                self.missing(at, span, field.key);
+            // The population's may be given outside the file, and the version is told of with its mend.
+            if table.get(field.key).is_none() && at != "population" && field.key != "neap" {
+                self.missing(&section, field.key);
             }
         }
-        Section { at, table, span }
+        section
     }
 
-    /// A required key is missing.
-    pub(super) fn missing(&mut self, at: &str, header: Span, key: &str) {
-        let Some(field) = fields::find(at, key) else { return };
-        let fault = Diagnostic::error(header, format!("`{key}` is missing"))
-            .label(format!("needs `{key}`"))
-            .help(format!("{}: {}.", field.about, field.kind.phrase()));
+    /// A required key is missing. Where a key was meant for it and misspelt, that has been told.
+    pub(super) fn missing(&mut self, section: &Section, key: &str) {
+        let Some(field) = fields::find(section.at, key).filter(|_| !section.meant(key)) else { return };
+        let wanted = match field.kind {
+            Kind::Table => format!("Write [{}].", section.path(key)),
+            Kind::Tables => format!("Write [[{}]].", section.path(key)),
+            kind => format!("{}: {}.", field.about, kind.phrase()),
+        };
+        let mut fault = Diagnostic::error(section.span, format!("`{key}` is missing")).help(wanted);
+        if section.at.is_empty() {
+            fault.span = None;
+        } else {
+            fault = fault.label(format!("needs `{key}`"));
+        }
         self.report_absent(fault);
     }
 
-    /// A key of the design that this version does not read.
-    pub(super) fn later(&mut self, what: &str, at: Span, about: &str) {
+    /// A key or a value of the design that this version does not read.
+    pub(super) fn later(&mut self, what: &str, at: Span) {
         self.report(
             Diagnostic::error(at, format!("`{what}` is not in this version"))
-                .label("later")
-                .help(format!("{about}: it is planned, and until then refused so that nothing is silently left out.")),
+                .label("planned")
+                .help("Nothing of a scenario is silently left out, so it is refused."),
         );
     }
 
     fn unknown_key(&mut self, at: &str, entry: &Entry) {
         let fault = Diagnostic::error(entry.key_span, format!("unknown key `{}`", entry.key));
-        self.report(match nearest(&entry.key, fields::of(at).map(|field| field.key)) {
-            Some(near) => fault.label("unknown").help(format!("Did you mean `{near}`?")).mend(entry.key_span, near),
-            None => {
-                let keys: Vec<String> = fields::of(at)
-                    .filter(|field| field.need != Need::Later)
-                    .map(|field| format!("`{}`", field.key))
-                    .collect();
-                fault.label("unknown").help(format!("Known here: {}.", keys.join(", ")))
-            }
+        let fault = fault.label("unknown");
+        let near = nearest(&entry.key, fields::of(at).map(|field| field.key));
+        self.report(if let Some(near) = near {
+            fault.help(format!("Did you mean `{near}`?")).mend(entry.key_span, near)
+        } else {
+            let keys: Vec<String> = fields::of(at)
+                .filter(|field| field.need != Need::Later)
+                .map(|field| format!("`{}`", field.key))
+                .collect();
+            fault.help(format!("Known here: {}.", keys.join(", ")))
         });
     }
 
@@ -181,8 +205,7 @@ impl Reader {
             return Some(word);
         }
         if later.contains(&text) {
-            let about = fields::find(section.at, key).map_or("", |field| field.about);
-            self.later(text, span, about);
+            self.later(text, span);
             return None;
         }
         let fault = Diagnostic::error(span, format!("`{key}` wants {}", kind.phrase())).label("unknown");
@@ -218,10 +241,12 @@ impl Reader {
             (Some(_), _, Some(inside)) => return Some(inside),
             (None, Some(_), Some(inside)) => self.report(
                 Diagnostic::error(span, format!("`{key}` wants a whole number without a fraction or a power of ten"))
+                    .label("write it out")
                     .mend(span, inside.to_string()),
             ),
             (_, Some(_), _) => self.report(
-                Diagnostic::error(span, format!("`{key}` must lie between {least} and {most}")).label("out of range"),
+                Diagnostic::error(span, format!("`{key}` must lie between {} and {}", grouped(least), grouped(most)))
+                    .label("out of range"),
             ),
             _ => self.report(Diagnostic::error(span, format!("`{key}` wants a whole number"))),
         }
@@ -247,7 +272,7 @@ impl Reader {
             }
             Value::Text { text, .. } if decimal(text.trim()).is_some() => {
                 let fault = Diagnostic::error(node.span, format!("`{name}` wants a bare number, without quotes"));
-                self.report(fault.mend(node.span, text.trim()));
+                self.report(fault.label("in quotes").mend(node.span, text.trim()));
                 None
             }
             _ => {
@@ -394,7 +419,7 @@ impl Reader {
                     Measured { quantity, span: node.span, unit }
                 }
                 Err(fault) => {
-                    self.report(placed(fault, node.span, *verbatim, wants.name));
+                    self.report(placed(*fault, node.span, *verbatim, wants.name));
                     return None;
                 }
             },
@@ -455,6 +480,19 @@ impl Wants<'_> {
     }
 }
 
+/// A whole number with its digits in threes, as the file format allows.
+pub(super) fn grouped(number: u64) -> String {
+    let digits = number.to_string();
+    let mut grouped = String::new();
+    for (place, digit) in digits.chars().enumerate() {
+        if place > 0 && (digits.len() - place).is_multiple_of(3) && digits.len() > 4 {
+            grouped.push('_');
+        }
+        grouped.push(digit);
+    }
+    grouped
+}
+
 /// A fault inside a text, moved to where the text stands; where escapes hide the place, the whole value is underlined.
 fn placed(fault: Diagnostic, whole: Span, verbatim: Option<usize>, name: &str) -> Diagnostic {
     let fault = Diagnostic { message: format!("`{name}`: {}", fault.message), ..fault };
@@ -477,7 +515,9 @@ fn misfit(measured: &Measured, wants: &Wants) -> Diagnostic {
     let Some(wanted) = wants.dimension else { return fault };
     if unit.dimension.per(Dimension::TIME) == wanted && !unit.text.is_empty() {
         let mended = format!("{}/h", unit.text);
-        return fault.help(format!("Write it per hour: `{mended}`.")).mend(measured.unit, mended);
+        let fault = fault.help(format!("Write it per hour: `{mended}`."));
+        // Where escapes hide the unit, an edit would replace the number too.
+        return if measured.unit == measured.span { fault } else { fault.mend(measured.unit, mended) };
     }
     let swapped = |from: Dimension, to: Dimension| wanted.per(to).times(from) == unit.dimension;
     if swapped(Dimension::MASS, Dimension::SUBSTANCE) || swapped(Dimension::SUBSTANCE, Dimension::MASS) {

@@ -116,6 +116,9 @@ fn repeated(reader: &mut Reader, section: &Section, first: Option<Exact>) -> Opt
         }
         (None, None) => {
             let at = section.get("every").map_or(section.span, |entry| entry.key_span);
+            if section.meant("count") || section.meant("until") {
+                return None;
+            }
             let fault = Diagnostic::error(at, "`every` needs `count` or `until`").label("for how long?");
             reader.report_absent(
                 fault.help("count = 14 gives fourteen doses; until = \"168 h\" gives none at 168 h or later."),

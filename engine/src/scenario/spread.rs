@@ -83,7 +83,7 @@ pub(super) fn limits(
 /// A value that the distribution needs.
 fn required(reader: &mut Reader, section: &Section, frame: &mut Frame, key: &str) -> Option<(f64, Measured)> {
     if !section.has(key) {
-        reader.missing(section.at, section.span, key);
+        reader.missing(section, key);
     }
     frame.value(reader, section, key)
 }
@@ -125,21 +125,18 @@ fn normal(reader: &mut Reader, section: &Section, frame: &mut Frame) -> Option<D
         return Some(Distribution::Normal { mean: f64::midpoint(low, high), sd: (high - low) / (2.0 * NORMAL_95) });
     }
     let mean = required(reader, section, frame, "mean");
-    let sd = match exactly_one(reader, section, &["sd", "cv"], "the spread")? {
-        "sd" => {
-            let (value, measured) = frame.value(reader, section, "sd")?;
-            not_negative(reader, "sd", (value, measured.span))
+    let sd = if exactly_one(reader, section, &["sd", "cv"], "the spread")? == "sd" {
+        let (value, measured) = frame.value(reader, section, "sd")?;
+        not_negative(reader, "sd", (value, measured.span))
+    } else {
+        let (cv, at) = reader.share(section, "cv")?;
+        let (mean, _) = mean.as_ref()?;
+        if *mean <= 0.0 {
+            let fault = Diagnostic::error(at, "`cv` says nothing about a mean that is not above zero");
+            reader.report(fault.label("needs a positive mean").help("Give `sd` instead."));
+            return None;
         }
-        _ => {
-            let (cv, at) = reader.share(section, "cv")?;
-            let (mean, _) = mean.as_ref()?;
-            if *mean <= 0.0 {
-                let fault = Diagnostic::error(at, "`cv` says nothing about a mean that is not above zero");
-                reader.report(fault.label("needs a positive mean").help("Give `sd` instead."));
-                return None;
-            }
-            Some(to_f64(&cv) * mean)
-        }
+        Some(to_f64(&cv) * mean)
     };
     let (mean, sd) = (mean?.0, sd?);
     Some(if sd > 0.0 { Distribution::Normal { mean, sd } } else { Distribution::Fixed { value: mean } })

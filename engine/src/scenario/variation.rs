@@ -120,7 +120,7 @@ pub(super) fn limits(
         let fault = Diagnostic::warning(at, format!("the limits do nothing: `{name}` has no random part"));
         reader.report(fault.label("limits of what?"));
     }
-    let held = typical.map(|typical| held(*varies, typical, low, high));
+    let held = typical.filter(|typical| *typical > 0.0).map(|typical| held(*varies, typical, low, high));
     if held.is_some_and(|held| held < LEAST_HELD) {
         reader.report(super::spread::holds_nothing(at));
         return None;
@@ -133,13 +133,14 @@ fn typical(section: &Section, kind: &Kind) -> Option<f64> {
     let entry = section.get("typical").filter(|_| !section.has("plus"))?;
     let wants = Wants { name: "typical", dimension: Some(kind.dimension), example: kind.example };
     let measured = Reader::default().measure(&entry.node, &wants)?;
-    Some(measured.quantity.in_base()).filter(|typical| *typical > 0.0)
+    Some(measured.quantity.in_base())
 }
 
 fn check_logit(reader: &mut Reader, section: &Section, varies: Option<&Varies>, typical: Option<f64>) {
     let Some(entry) = section.get("typical") else { return };
     let logit = matches!(varies, Some(Varies::LogitNormal { .. }));
-    if logit && !section.has("plus") && typical.is_none_or(|typical| typical >= 1.0) {
+    // Beyond the ends the value itself has been refused.
+    if logit && !section.has("plus") && typical.is_some_and(|typical| typical == 0.0 || typical == 1.0) {
         let said = "logit-normal variability needs a typical value between 0 and 100 %, both left out";
         reader.report(Diagnostic::error(entry.node.span, said).label("has no logit"));
     }

@@ -54,10 +54,10 @@ pub struct Partial {
 }
 
 impl Partial {
-    /// Nothing yet.
-    pub fn new(searches: &[Option<Search>], moments: usize) -> Self {
-        let kept =
-            searches.iter().map(|search| search.as_ref().map_or_else(Kept::default, |s| s.sieve().nothing())).collect();
+    /// Nothing yet, with room for what `patients` patients are expected to leave.
+    pub fn new(searches: &[Option<Search>], moments: usize, patients: u64) -> Self {
+        let nothing = |search: &Search| search.sieve().nothing((search.share * patients as f64) as usize);
+        let kept = searches.iter().map(|search| search.as_ref().map_or_else(Kept::default, nothing)).collect();
         Self { patients: 0, kept, moments: vec![Moments::default(); moments] }
     }
 
@@ -75,6 +75,7 @@ impl Partial {
         self.patients += other.patients;
         for (mine, theirs) in self.kept.iter_mut().zip(&other.kept) {
             add(&mut mine.from_bracket, &theirs.from_bracket);
+            add(&mut mine.in_bracket, &theirs.in_bracket);
             add(&mut mine.from_edge, &theirs.from_edge);
             mine.values.extend_from_slice(&theirs.values);
         }
@@ -88,7 +89,7 @@ impl Partial {
         let mut words = vec![self.patients, self.kept.len() as u64, self.moments.len() as u64];
         for kept in &self.kept {
             words.extend([kept.from_bracket.len() as u64, kept.from_edge.len() as u64, kept.values.len() as u64]);
-            words.extend(kept.from_bracket.iter().chain(&kept.from_edge));
+            words.extend(kept.from_bracket.iter().chain(&kept.in_bracket).chain(&kept.from_edge));
             words.extend(kept.values.iter().map(|value| value.to_bits()));
         }
         for moments in &self.moments {
@@ -112,6 +113,7 @@ impl Partial {
             let &[brackets, edges, values] = take(3)? else { return None };
             partial.kept.push(Kept {
                 from_bracket: take(brackets)?.to_vec(),
+                in_bracket: take(brackets)?.to_vec(),
                 from_edge: take(edges)?.to_vec(),
                 values: take(values)?.iter().map(|&bits| f64::from_bits(bits)).collect(),
             });

@@ -3,8 +3,6 @@
 //! In the manner of Floyd and Rivest 1975 (Commun ACM 18:165-172; from memory): a small sample says between which two values the
 //! wanted ranks must lie, one pass picks those out, and only they are ordered.
 
-use multiversion::multiversion;
-
 use crate::math::narrow;
 
 /// Lists shorter than this are ordered as they are.
@@ -28,11 +26,6 @@ pub(super) struct Bracket {
     pub(super) high: f64,
     pub(super) inside: usize,
     pub(super) from: usize,
-}
-
-/// How many values of all lists are at or above `low`.
-pub(super) fn count_from(lists: &[&[f64]], low: f64) -> usize {
-    lists.iter().map(|values| at_least(values, low)).sum()
 }
 
 /// Hands the value of each of `ranks` (rising, counted from 0 within the bracket) to `found`.
@@ -101,15 +94,6 @@ fn part(
     scratch.picked.clear();
     let at_or_above: usize = lists.iter().map(|values| narrow(values, low, high, &mut scratch.picked)).sum();
     Some((bracket.from - at_or_above, scratch.picked.len()))
-}
-
-#[multiversion(targets("x86_64+avx512f+avx512bw+avx512dq+avx512vl", "x86_64+avx2"))]
-fn at_least(values: &[f64], low: f64) -> usize {
-    let mut count = 0u64;
-    for value in values {
-        count += u64::from(*value >= low);
-    }
-    count as usize
 }
 
 /// Maps a value to an integer that orders as the value does (negative zero below zero).

@@ -2,7 +2,7 @@
 
 use crate::math::{Kept, Sieve};
 
-use super::select::{Bracket, Scratch, count_from, select};
+use super::select::{Bracket, Scratch, select};
 
 /// Edges of a window: shares are counts at or above them.
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -100,17 +100,17 @@ impl Search {
         let mut known: Vec<(f64, u64)> = Vec::new();
         let lists: Vec<&[f64]> = kept.iter().map(|kept| kept.values.as_slice()).collect();
         let brackets = self.sieve.brackets();
-        // Values are kept within brackets only, so those from the start of a bracket to that of the next are its own.
-        let mut from: Vec<usize> = brackets.iter().map(|&(low, _)| count_from(&lists, low)).collect();
-        from.push(0);
+        let held = |index: usize| kept.iter().map(|kept| kept.in_bracket[index]).sum::<u64>();
         for (index, &(low, high)) in brackets.iter().enumerate() {
             let below = patients - kept.iter().map(|kept| kept.from_bracket[index]).sum::<u64>();
-            let inside = from[index] - from[index + 1];
-            let above = below + inside as u64;
+            let inside = held(index);
+            let above = below + inside;
             let start = ranks.partition_point(|&rank| rank < below);
             let end = ranks.partition_point(|&rank| rank < above);
             let wanted: Vec<usize> = ranks[start..end].iter().map(|&rank| (rank - below) as usize).collect();
-            let bracket = Bracket { low, high, inside, from: from[index] };
+            // Values are kept within brackets only, which rise.
+            let from = (index..brackets.len()).map(held).sum::<u64>();
+            let bracket = Bracket { low, high, inside: inside as usize, from: from as usize };
             select(&lists, bracket, &wanted, scratch, &mut |place, value| found[start + place] = Found::Value(value));
             known.push((low, below));
             known.push((high, above));

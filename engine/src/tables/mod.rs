@@ -1,12 +1,12 @@
 //! From results to files: Arrow record batches, Parquet tables and a folder that is complete or absent.
 //!
-//! | file | one row is | module |
+//! | file | one row is | columns |
 //! | --- | --- | --- |
-//! | `bands.parquet` | a percentile at a time in an arm | [`rows`] |
-//! | `shares.parquet` | the parts of the population round the window at a time in an arm; only with a window | [`rows`] |
-//! | `population.parquet` | a statistic of a covariate or parameter | [`rows`] |
-//! | `patients.parquet` | a patient in an arm; only on request | [`patients`] |
-//! | `run.json` | how it all came about, with times | [`provenance`] |
+//! | `bands.parquet` | a percentile at a time in an arm | [`BANDS`] |
+//! | `shares.parquet` | the parts of the population round the window at a time in an arm; only with a window | [`SHARES`] |
+//! | `population.parquet` | a statistic of a covariate or parameter | [`POPULATION`] |
+//! | `patients.parquet` | a patient in an arm; only on request | [`PATIENTS`], [`patients_schema`] |
+//! | `run.json` | | how it all came about, with times |
 //!
 //! All but `run.json` have the same bytes for the same scenario, seed and version. The Parquet writer's own version does
 //! not stand in them, but a new one may encode otherwise: then the bytes move, and the change log says so.

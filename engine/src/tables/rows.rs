@@ -6,7 +6,8 @@ use arrow::array::{ArrayRef, Float64Array, Int64Array, RecordBatch, StringArray}
 
 use super::names;
 use super::schema::{BANDS, POPULATION, SHARES, Table};
-use crate::run::{CONCENTRATION, INTERVAL_LEVEL, Results};
+use crate::run::{CONCENTRATION, Counts, INTERVAL_LEVEL, Results};
+use crate::scenario::Window;
 use crate::summary::wilson;
 
 /// How the intervals of percentiles are made.
@@ -32,11 +33,23 @@ pub struct Share {
 }
 
 impl Share {
+    /// Of nobody, which is certain.
+    const NOBODY: Self = Self { value: 0.0, standard_error: 0.0, lower: 0.0, upper: 0.0 };
+
     /// The share that `count` of `patients` is.
     pub fn of(count: u64, patients: u64) -> Self {
         let value = count as f64 / patients as f64;
         let (lower, upper) = wilson(count, patients, INTERVAL_LEVEL);
         Self { value, standard_error: (value * (1.0 - value) / patients as f64).sqrt(), lower, upper }
+    }
+
+    /// The shares below, within and above; `None` on a side where the window is open, since nobody can be there.
+    pub fn parts(counts: Counts, patients: u64, window: &Window) -> [Option<Self>; 3] {
+        [
+            window.low.map(|_| Self::of(counts.below, patients)),
+            Some(Self::of(counts.within, patients)),
+            window.high.map(|_| Self::of(counts.above, patients)),
+        ]
     }
 }
 
@@ -74,7 +87,10 @@ pub(super) fn shares(results: &Results) -> RecordBatch {
             .flat_map(|arm| arm.times.iter().filter_map(move |at| Some((arm.name.as_str(), at.time_h, at.shares?))))
     };
     let count = rows().count();
-    let window = names::window(results.plan.scenario()).unwrap_or_default();
+    let scenario = results.plan.scenario();
+    let window = names::window(scenario).unwrap_or_default();
+    let open = Window { low: None, high: None };
+    let limits = scenario.window.as_ref().unwrap_or(&open);
     let mut columns = vec![
         text(rows().map(|(arm, ..)| arm)),
         text(std::iter::repeat_n(EVERYONE, count)),
@@ -84,7 +100,7 @@ pub(super) fn shares(results: &Results) -> RecordBatch {
     ];
     for part in 0..3 {
         let shares: Vec<Share> = rows()
-            .map(|(.., counts)| Share::of([counts.below, counts.within, counts.above][part], results.patients))
+            .map(|(.., counts)| Share::parts(counts, results.patients, limits)[part].unwrap_or(Share::NOBODY))
             .collect();
         columns.push(number(shares.iter().map(|share| share.value)));
         columns.push(number(shares.iter().map(|share| share.standard_error)));
@@ -134,6 +150,7 @@ mod tests {
     use arrow::array::{Array, AsArray};
     use arrow::datatypes::Float64Type;
 
+    use super::*;
     use crate::tables::testing;
 
     #[test]
@@ -162,6 +179,18 @@ mod tests {
         assert!((of("within_mc_lower").value(5) - 0.150_0).abs() < 1e-4);
         assert!((of("within_mc_upper").value(5) - 0.850_0).abs() < 1e-4);
         assert_eq!(shares.column_by_name("window").unwrap().as_string::<i32>().value(0), "2 to 8 mg/L");
+    }
+
+    #[test]
+    fn nobody_is_certain_where_the_window_is_open() {
+        let counts = Counts { below: 0, within: 3, above: 1 };
+        let parts = Share::parts(counts, 4, &Window { low: None, high: Some(8.0) });
+        assert_eq!(parts.map(|part| part.map(|share| share.value)), [None, Some(0.75), Some(0.25)]);
+        let mut scenario = testing::scenario();
+        scenario.window = Some(Window { low: None, high: Some(8.0) });
+        let shares = testing::results_of(scenario).shares();
+        let upper = shares.column_by_name("below_mc_upper").unwrap().as_primitive::<Float64Type>();
+        assert!(upper.values().iter().all(|upper| *upper == 0.0));
     }
 
     #[test]
