@@ -84,6 +84,14 @@ fn every_bad_scenario_has_a_fault() {
 }
 
 #[test]
+fn a_file_that_cannot_be_read_is_no_fault_of_its_content() {
+    let missing = Scenario::read(Path::new("golden/no such file.toml"));
+    assert!(matches!(missing, Err(Fault::Io { .. })));
+    let folder = Scenario::read(Path::new(env!("CARGO_MANIFEST_DIR")));
+    assert!(matches!(folder, Err(Fault::Io { .. })));
+}
+
+#[test]
 fn demo_scenarios_have_no_faults() {
     for path in scenarios("../scenarios") {
         assert_eq!(said_about(&path), "", "{}", path.display());

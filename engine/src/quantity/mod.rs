@@ -1,7 +1,7 @@
 //! Physical values with their units, exact until the last rounding.
 //!
 //! The units are a part of UCUM (the Unified Code for Units of Measure); see [`Unit::parse`]. Faults of a text are
-//! [`Diagnostic`](crate::diagnostic::Diagnostic)s whose spans count from its first byte.
+//! [`Diagnostic`]s whose spans count from its first byte.
 
 mod dimension;
 mod number;

@@ -1,8 +1,9 @@
 //! Reads the arms and their dose rows. What amounts are counted in is settled here, by the first amount of the file.
 
 use super::document::{Node, Value};
+use super::measure::{Measured, Wants};
 use super::population::Covariates;
-use super::reader::{Measured, Reader, Section, Wants};
+use super::reader::{Reader, Section};
 use super::schedule;
 use super::{Amount, AmountUnit, Arm, Dose, Limited, Route};
 use crate::diagnostic::{Diagnostic, Span};
@@ -168,7 +169,9 @@ fn settled(
     let example = per.map_or_else(|| "500 mg".to_owned(), |unit| format!("25 mg/{}", unit.text));
     let measured = reader.measure(node, &Wants { name: "amount", dimension: None, example: &example })?;
     let dimension = measured.quantity.unit.dimension.times(below);
-    let Some(unit) = AmountUnit::ALL.into_iter().find(|unit| unit.dimension() == dimension) else {
+    // "25 %" of a weight is a mass too, and surely no dose.
+    let quotient = per.is_none() || measured.quantity.unit.text.contains(['/', '-']);
+    let Some(unit) = AmountUnit::ALL.into_iter().find(|unit| quotient && unit.dimension() == dimension) else {
         reader.report(no_amount(&measured, per, &example));
         return None;
     };

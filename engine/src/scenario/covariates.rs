@@ -4,8 +4,9 @@ use num_traits::{Signed, Zero};
 
 use super::document::{Entry, Node, Value};
 use super::fields::{Kind, quoted};
+use super::measure::{Measured, Wants};
 use super::nearest::nearest;
-use super::reader::{Measured, Reader, Section, Wants};
+use super::reader::{Reader, Section};
 use super::spread::limited;
 use super::{Covariate, Spread};
 use crate::diagnostic::{Diagnostic, Span};
@@ -56,10 +57,6 @@ impl<'n> Frame<'n> {
         let measured = reader.measure(node, &Wants { name: shown, dimension, example: &example })?;
         let unit = self.unit.get_or_insert_with(|| measured.quantity.unit.clone());
         let value = measured.quantity.in_unit(unit);
-        if !value.is_finite() {
-            reader.report(Diagnostic::error(measured.span, format!("`{name}` is beyond all measure")));
-            return None;
-        }
         Some((value, measured))
     }
 

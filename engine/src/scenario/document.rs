@@ -178,6 +178,19 @@ fn form_fault(text: &str, message: &str, range: Option<std::ops::Range<usize>>) 
             None => fault.help("Keep one of the two."),
         };
     }
+    let written = text[at.start..at.end].trim();
+    match kind_of(message) {
+        "key with no value" => return Diagnostic::error(at, "a key has no value").label("needs `=` and a value"),
+        "string values must be quoted" if written.is_empty() => {
+            return Diagnostic::error(at, "a value is missing").label("nothing here");
+        }
+        "string values must be quoted" if !written.contains(['"', '\\']) => {
+            return Diagnostic::error(at, "a value that is not a bare number stands in quotes")
+                .label("no quotes")
+                .mend(at, format!("\"{written}\""));
+        }
+        _ => {}
+    }
     Diagnostic::error(at, format!("the file is not TOML here: {message}"))
         .help("Text stands in quotes, and each `key = value` on a line of its own.")
 }

@@ -1,14 +1,18 @@
 //! Reads what covariates do to a parameter: factors in `scale`, terms in `plus`.
 
 use super::covariates::with_near;
+use super::measure::Wants;
 use super::nearest::nearest;
 use super::population::Covariates;
 use super::portable::{exp, ln};
-use super::reader::{Reader, Section, Wants};
+use super::reader::{Reader, Section};
 use super::roles::Kind;
 use super::{Additive, Covariate, Factor, Limited, Parameter, Spread};
 use crate::diagnostic::{Diagnostic, Span};
 use crate::quantity::{Dimension, Unit, to_f64};
+
+/// No power is higher.
+const LARGEST_EXPONENT: f64 = 20.0;
 
 /// What acts on one parameter.
 #[derive(Default)]
@@ -174,7 +178,12 @@ fn numeric(
                     .report(Diagnostic::error(measured.span, "`reference` must be above zero").label("not above zero"));
                 return None;
             }
-            Factor::Power { covariate, reference: reference?, exponent: exponent?.0 }
+            let (exponent, span) = exponent?;
+            if exponent.abs() > LARGEST_EXPONENT {
+                reader.report(super::measure::beyond(span, "exponent"));
+                return None;
+            }
+            Factor::Power { covariate, reference: reference?, exponent }
         }
         "slope" => {
             let slope = per_covariate(reader, section, "slope", Dimension::NONE, unit);

@@ -14,6 +14,7 @@ mod covariates;
 mod document;
 mod effects;
 pub mod fields;
+mod measure;
 mod nearest;
 mod output;
 mod parameters;
@@ -24,7 +25,11 @@ mod reader;
 mod roles;
 mod schedule;
 mod spread;
+mod values;
 mod variation;
+
+#[cfg(test)]
+mod tests;
 
 use crate::diagnostic::{Diagnostic, Source};
 use crate::quantity::{Dimension, Exact, Unit};

@@ -4,7 +4,8 @@ use num_traits::Zero;
 
 use super::document::{Entry, Node, Table, Value};
 use super::fields::Kind;
-use super::reader::{Measured, Reader, Section, Wants};
+use super::measure::{Measured, Wants};
+use super::reader::{Reader, Section};
 use super::schedule::rises;
 use super::{AmountUnit, Window};
 use crate::diagnostic::{Diagnostic, Span};
@@ -228,7 +229,7 @@ fn part(reader: &mut Reader, item: &Node) -> Option<Vec<Exact>> {
     let Value::Table(table) = &item.value else {
         let wants = Wants { name: "times", dimension: Some(Dimension::TIME), example: "12 h" };
         let measured = reader.measure(item, &wants)?;
-        return reader.not_negative("times", &measured).map(|time| vec![time]);
+        return reader.hours("times", &measured).map(|time| vec![time]);
     };
     let section = reader.open("output.times", table, item.span);
     let (from, to, step) = (reader.time(&section, "from"), reader.time(&section, "to"), reader.time(&section, "step"));

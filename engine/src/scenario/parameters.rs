@@ -6,9 +6,10 @@ use super::correlations;
 use super::document::{Entry, Table, Value};
 use super::effects::{self, Effects};
 use super::fields::{Kind as FieldKind, LATER_PARAMETERS};
+use super::measure::{Measured, Wants};
 use super::nearest::nearest;
 use super::population::Covariates;
-use super::reader::{Measured, Reader, Section, Wants};
+use super::reader::{Reader, Section};
 use super::roles::{KINDS, Kind, ONE_VOLUME, Sign};
 use super::variation;
 use super::{Model, Parameter, Role, Varies};
@@ -87,7 +88,13 @@ fn one<'t>(
     let kind = match known(reader, entry, model) {
         Ok(kind) => kind,
         // The name that was meant counts as written: its absence is no further fault.
-        Err(meant) => return meant.map(named),
+        Err(meant) => {
+            // What the table says is judged all the same.
+            if let Some(kind) = KINDS.iter().find(|kind| Some(kind.name) == meant) {
+                body(reader, entry, kind, covariates);
+            }
+            return meant.map(named);
+        }
     };
     used(reader, entry, kind, model, demand);
     let parameter = body(reader, entry, kind, covariates);

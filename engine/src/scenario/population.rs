@@ -5,7 +5,8 @@ use super::document::{Table, Value};
 use super::fields;
 use super::nearest::nearest;
 use super::parameters::is_parameter_name;
-use super::reader::{Reader, Section, grouped};
+use super::reader::{Reader, Section};
+use super::values::grouped;
 use super::{Overrides, Spread};
 use crate::diagnostic::{Diagnostic, Span};
 

@@ -51,10 +51,12 @@ impl Scenario {
         let draft = draft(&mut reader, &root, overrides);
         let mut diagnostics = form;
         // What stands on a line that could not be read is guesswork.
-        let broken: Vec<usize> =
-            diagnostics.iter().filter_map(|d| d.span).map(|s| source.position(s.start).0).collect();
-        let line = |d: &Diagnostic| d.span.map(|span| source.position(span.start).0);
-        diagnostics.extend(reader.found.into_iter().filter(|d| line(d).is_none_or(|line| !broken.contains(&line))));
+        let lines: Vec<Span> =
+            diagnostics.iter().filter_map(|fault| fault.span.map(|at| line(&source.text, at))).collect();
+        let guess = |found: &Diagnostic| {
+            found.span.is_some_and(|at| lines.iter().any(|line| line.start <= at.start && at.start <= line.end))
+        };
+        diagnostics.extend(reader.found.into_iter().filter(|found| !guess(found)));
         diagnostics.sort_by_key(|diagnostic| diagnostic.span);
         if diagnostics.iter().any(|diagnostic| diagnostic.severity == Severity::Error) {
             return Err(Fault::Scenario { source, diagnostics });
@@ -68,6 +70,12 @@ impl Scenario {
             }),
         }
     }
+}
+
+/// The line in which a place lies.
+fn line(text: &str, at: Span) -> Span {
+    let start = text[..at.start].rfind('\n').map_or(0, |newline| newline + 1);
+    Span { start, end: text[start..].find('\n').map_or(text.len(), |newline| start + newline) }
 }
 
 /// The text of a file.

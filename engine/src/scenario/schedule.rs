@@ -4,7 +4,8 @@ use num_traits::{ToPrimitive, Zero};
 
 use super::arms::MOST_DOSES;
 use super::document::Value;
-use super::reader::{Reader, Section, Wants};
+use super::measure::Wants;
+use super::reader::{Reader, Section};
 use crate::diagnostic::{Diagnostic, Span};
 use crate::quantity::{Dimension, Exact};
 
@@ -58,7 +59,7 @@ fn listed(reader: &mut Reader, section: &Section) -> Option<Vec<Exact>> {
     let mut times: Vec<Exact> = Vec::with_capacity(items.len());
     let mut sound = !clash;
     for item in items {
-        let time = reader.measure(item, &wants).and_then(|measured| reader.not_negative("at", &measured));
+        let time = reader.measure(item, &wants).and_then(|measured| reader.hours("at", &measured));
         let Some(time) = time else {
             sound = false;
             continue;

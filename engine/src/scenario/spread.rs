@@ -3,11 +3,15 @@
 
 use super::chance::LEAST_HELD;
 use super::covariates::{Frame, one_of, only};
+use super::measure::Measured;
 use super::portable::{NORMAL_95, ln};
-use super::reader::{Measured, Reader, Section};
+use super::reader::{Reader, Section};
 use super::{Distribution, Limited};
 use crate::diagnostic::{Diagnostic, Span};
 use crate::quantity::to_f64;
+
+/// No spread of a logarithm is larger: people one standard deviation apart would differ twenty-thousandfold.
+pub(super) const LARGEST_LOG_SD: f64 = 10.0;
 
 /// Reads the keys that the distribution takes, and its limits.
 pub(super) fn limited(
@@ -195,9 +199,9 @@ fn lognormal(reader: &mut Reader, section: &Section, frame: &mut Frame) -> Optio
     if log_sd == 0.0 {
         return Some(Distribution::Fixed { value });
     }
-    let sensible = median > 0.0 && log_sd.is_finite();
+    let sensible = median > 0.0 && log_sd <= LARGEST_LOG_SD;
     if !sensible {
-        reader.report(Diagnostic::error(section.span, "the spread is beyond all measure"));
+        reader.report(super::measure::beyond(section.span, "the spread"));
     }
     sensible.then_some(Distribution::Lognormal { median, log_sd })
 }

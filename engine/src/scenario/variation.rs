@@ -1,10 +1,11 @@
 //! Reads how a parameter varies between subjects, and the limits of its individual values.
 
 use super::chance::{LEAST_HELD, normal_between};
+use super::measure::{Wants, beyond};
 use super::portable::ln;
-use super::reader::{Reader, Section, Wants};
+use super::reader::{Reader, Section};
 use super::roles::Kind;
-use super::spread::{exactly_one, limits as bounds};
+use super::spread::{LARGEST_LOG_SD, exactly_one, limits as bounds};
 use super::{Role, Varies};
 use crate::diagnostic::{Diagnostic, Span};
 use crate::quantity::to_f64;
@@ -70,13 +71,17 @@ fn spread(reader: &mut Reader, section: &Section, key: &str, form: &str) -> Opti
         reader.report(Diagnostic::error(at, format!("`{key}` is below zero")).label("negative"));
         return None;
     }
+    let log_sd = if key == "log_variance" { value.sqrt() } else { value };
+    if key != "cv" && log_sd > LARGEST_LOG_SD {
+        reader.report(beyond(at, key));
+        return None;
+    }
     Some(match (form, key) {
         _ if value == 0.0 => Varies::Not,
         ("normal", _) => Varies::Normal { cv: value },
         ("logit-normal", _) => Varies::LogitNormal { logit_sd: value },
         (_, "cv") => Varies::Lognormal { log_sd: ln(1.0 + value * value).sqrt() },
-        (_, "log_sd") => Varies::Lognormal { log_sd: value },
-        _ => Varies::Lognormal { log_sd: value.sqrt() },
+        _ => Varies::Lognormal { log_sd },
     })
 }
 
