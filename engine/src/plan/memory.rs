@@ -1,6 +1,7 @@
 //! How much is kept, and how many passes a memory budget makes of it.
 
 use super::Plan;
+use crate::course::{AT_A_TIME, KEPT_RUNS, KEPT_STEPS};
 use crate::math::{LANES, Row};
 
 /// Up to so many patients every value is kept: a pilot would not pay.
@@ -43,8 +44,7 @@ impl Plan {
     /// Bytes of the blocks in work, all threads together.
     pub fn block_bytes(&self) -> u64 {
         let rows = self.cohort.len() + 2 * self.individuals.len() + self.individuals.scratch();
-        let march =
-            8 + 7 * (2 + crate::course::KEPT_STEPS) + (4 + crate::course::AT_A_TIME) * self.protocol.shapes.len() + 8;
+        let march = 8 + 7 * (2 + KEPT_STEPS) + 2 * (1 + KEPT_RUNS) + (4 + AT_A_TIME) * self.protocol.shapes.len() + 8;
         (self.limits().threads * (rows + march) * size_of::<Row>()) as u64
     }
 
