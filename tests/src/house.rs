@@ -2,11 +2,11 @@
 
 use std::fmt::Write as _;
 
-/// The modules of the engine: a module imports only from rows above its own. Modules of one row stand side by side: the
-/// later may import the earlier.
+/// The modules of the engine: a module imports only from rows above its own. Of two in one row the
+/// second may import the first.
 pub const HOUSE: [&[&str]; 13] = [
     &["math"],
-    &["quantity", "diagnostic"],
+    &["diagnostic", "quantity"],
     &["scenario"],
     &["draw"],
     &["cohort"],
