@@ -107,6 +107,10 @@ impl Sink for Absorb<'_> {
         self.aims.searches[series].is_some()
     }
 
+    fn soon(&self, series: usize) {
+        self.partial.prefetch(series);
+    }
+
     fn signal(&mut self, series: usize, row: &Row, scale: f64) {
         if let Some(search) = &self.aims.searches[series] {
             self.partial.absorb(series, search, row, scale, self.lanes);

@@ -58,6 +58,9 @@ impl<'a> Worker<'a> {
             clock.lap(|clock| &mut clock.solving);
             for arm in 0..plan.protocol.arms.len() {
                 let series = arm * times + index;
+                if index + 1 < until {
+                    sink.soon(series + 1);
+                }
                 if sink.wants(series) {
                     let (row, scale) = concentration(plan, &self.march, &self.covariates, arm, &mut self.mix);
                     sink.signal(series, row, scale);
@@ -75,6 +78,9 @@ pub(super) trait Sink {
 
     /// Whether this series of concentrations is looked at.
     fn wants(&self, series: usize) -> bool;
+
+    /// This series of concentrations comes soon.
+    fn soon(&self, _series: usize) {}
 
     /// Concentrations of a series: each lane of `row` times `scale`.
     fn signal(&mut self, series: usize, row: &Row, scale: f64);

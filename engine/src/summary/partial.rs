@@ -66,6 +66,12 @@ impl Partial {
         search.sieve().sift(row, scale, count, &mut self.kept[series]);
     }
 
+    /// Prepares for the next block of a series: see [`Kept::prefetch`].
+    #[inline]
+    pub fn prefetch(&self, series: usize) {
+        self.kept[series].prefetch();
+    }
+
     /// Adds what other patients contributed to the same searches.
     ///
     /// # Panics
