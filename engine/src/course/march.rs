@@ -10,6 +10,9 @@ use crate::scenario::Role;
 /// Distinct steps whose matrices are kept for a block; the others are computed where they are met.
 pub const KEPT_STEPS: usize = 16;
 
+/// Output times that are computed at one go, so that amounts stay in registers from one to the next.
+pub const AT_A_TIME: usize = 8;
+
 /// The work of one block; belongs to a worker and is used again for the next block.
 #[derive(Debug)]
 pub struct March {
@@ -24,22 +27,34 @@ pub struct March {
     fold: Step,
     infused: Infused,
     states: Vec<State>,
-    /// What a unit dose by mouth puts into the gut.
-    entry: Row,
+    /// What a unit dose leaves at once: into blood, and by mouth.
+    entry: Entry,
     lag: Row,
     lagged: bool,
+    shortest_lag: f64,
+    longest_lag: f64,
 }
 
-/// Amounts of one shape, per unit given each time, and the concentration that follows.
+/// What one shape has left in the body: amounts per unit given each time and per litre of central volume, so that the central one
+/// is the concentration.
 #[derive(Clone, Debug)]
 struct State {
     gut: Row,
     central: Row,
     peripheral: Row,
-    concentration: Row,
+    /// Concentration at the output times of one go.
+    concentrations: Vec<Row>,
     /// Dose of a lagged track that has not reached every lane yet.
     pending: usize,
     started: bool,
+}
+
+/// A unit amount over the central volume, 1/L.
+#[derive(Clone, Debug)]
+struct Entry {
+    blood: Row,
+    /// Times the bioavailability.
+    mouth: Row,
 }
 
 impl March {
@@ -57,7 +72,7 @@ impl March {
             gut: Row::ZERO,
             central: Row::ZERO,
             peripheral: Row::ZERO,
-            concentration: Row::ZERO,
+            concentrations: vec![Row::ZERO; AT_A_TIME],
             pending: 0,
             started: false,
         };
@@ -71,9 +86,11 @@ impl March {
             fold: Step::default(),
             infused: Infused::default(),
             states: vec![state; timetable.tracks.len()],
-            entry: Row::splat(1.0),
+            entry: Entry { blood: Row::ZERO, mouth: Row::ZERO },
             lag: Row::ZERO,
             lagged: timetable.tracks.iter().any(|track| !track.lagged.is_empty()),
+            shortest_lag: 0.0,
+            longest_lag: 0.0,
         }
     }
 
@@ -81,9 +98,15 @@ impl March {
     pub fn start<'a>(&mut self, timetable: &Timetable, parameter: impl Fn(Role) -> Option<&'a Row>) {
         let needed = |role| parameter(role).expect("the scenario's check made sure that the model has its parameters");
         self.rates.fill(&self.structure, needed);
-        self.entry = parameter(Role::Bioavailability).copied().unwrap_or(Row::splat(1.0));
+        self.entry.blood = self.rates.per_volume;
+        self.entry.mouth = self.rates.per_volume;
+        if let Some(bioavailability) = parameter(Role::Bioavailability) {
+            scale(&mut self.entry.mouth, bioavailability);
+        }
         if self.lagged {
             self.lag = *needed(Role::LagTime);
+            self.shortest_lag = self.lag.iter().copied().fold(f64::INFINITY, f64::min);
+            self.longest_lag = self.lag.iter().copied().fold(0.0, f64::max);
         }
         for (matrix, &span) in self.kept.iter_mut().zip(&self.kept_spans) {
             matrix.fill(&self.structure, &self.rates, &Row::splat(timetable.spans[span]));
@@ -92,72 +115,67 @@ impl March {
             state.gut = Row::ZERO;
             state.central = Row::ZERO;
             state.peripheral = Row::ZERO;
-            state.concentration = Row::ZERO;
             state.pending = 0;
             state.started = false;
         }
     }
 
-    /// Advances every shape to output time `index`; to be called for each in order.
-    pub fn advance(&mut self, timetable: &Timetable, index: usize) {
-        let step = (index > 0).then(|| timetable.steps[index - 1]);
-        let mut here: Option<usize> = None;
-        let per_volume = &self.rates.per_volume;
+    /// Advances every shape through the output times `range`, at most [`AT_A_TIME`]; to be called for all of them in order.
+    pub fn advance(&mut self, timetable: &Timetable, range: std::ops::Range<usize>) {
+        let start = range.start;
         for (track, state) in timetable.tracks.iter().zip(&mut self.states) {
-            if index < track.first {
-                continue;
-            }
-            if let (Some(span), true) = (step, state.started) {
-                let matrix = match self.slots[span] {
-                    Some(slot) => &self.kept[slot],
-                    None => {
-                        if here != Some(span) {
-                            self.step.fill(&self.structure, &self.rates, &Row::splat(timetable.spans[span]));
-                            here = Some(span);
-                        }
-                        &self.step
+            let mut index = start.max(track.first);
+            while index < range.end {
+                if state.started {
+                    let span = timetable.steps[index - 1];
+                    let mut end = index + 1;
+                    let lags = (self.shortest_lag, self.longest_lag);
+                    while end < range.end
+                        && timetable.steps[end - 1] == span
+                        && track.quiet(&timetable.times, end - 1, state.pending, lags)
+                    {
+                        end += 1;
                     }
-                };
-                match (track.oral, self.structure.peripheral.is_some()) {
-                    (false, false) => advance_c(matrix, per_volume, state),
-                    (true, false) => advance_gc(matrix, per_volume, state),
-                    (false, true) => advance_cp(matrix, per_volume, state),
-                    (true, true) => advance_gcp(matrix, per_volume, state),
+                    let matrix = if let Some(slot) = self.slots[span] {
+                        &self.kept[slot]
+                    } else {
+                        self.step.fill(&self.structure, &self.rates, &Row::splat(timetable.spans[span]));
+                        &self.step
+                    };
+                    let State { gut, central, peripheral, concentrations, .. } = &mut *state;
+                    let amounts = Amounts { gut, central, peripheral };
+                    let rows = &mut concentrations[index - start..end - start];
+                    run(track.oral, self.structure.peripheral.is_some(), matrix, amounts, rows);
+                    index = end - 1;
                 }
-            }
-            state.started = true;
-            let mut folding = Folding {
-                structure: &self.structure,
-                rates: &self.rates,
-                slots: &self.slots,
-                kept: &self.kept,
-                spans: &timetable.spans,
-                matrix: &mut self.fold,
-                infused: &mut self.infused,
-                entry: &self.entry,
-            };
-            let mut entered = !track.folds[index].is_empty();
-            for fold in &track.folds[index] {
-                folding.fold(track, fold, state);
-            }
-            if !track.lagged.is_empty() {
-                entered |= folding.lagged(track, &timetable.times, index, &self.lag, state);
-            }
-            if entered {
-                multiply(&state.central, per_volume, &mut state.concentration);
+                state.started = true;
+                let mut folding = Folding {
+                    structure: &self.structure,
+                    rates: &self.rates,
+                    slots: &self.slots,
+                    kept: &self.kept,
+                    spans: &timetable.spans,
+                    matrix: &mut self.fold,
+                    infused: &mut self.infused,
+                    entry: &self.entry,
+                };
+                for fold in &track.folds[index] {
+                    folding.fold(track, fold, state);
+                }
+                if !track.lagged.is_empty() {
+                    let lags = (self.shortest_lag, self.longest_lag);
+                    folding.lagged(track, &timetable.times, index, &self.lag, lags, state);
+                }
+                state.concentrations[index - start] = state.central;
+                index += 1;
             }
         }
     }
 
-    /// Concentration per unit amount of a shape at the output time last advanced to; `None` before its first dose.
-    pub fn concentration(&self, shape: usize) -> Option<&Row> {
-        self.states[shape].started.then_some(&self.states[shape].concentration)
-    }
-
-    /// Amounts per unit amount in gut, central and peripheral compartment of a shape.
-    pub fn amounts(&self, shape: usize) -> [&Row; 3] {
-        let state = &self.states[shape];
-        [&state.gut, &state.central, &state.peripheral]
+    /// Concentration per unit amount of a shape at the output time `place` places after the first of those last advanced to; `None`
+    /// before its first dose.
+    pub fn concentration(&self, timetable: &Timetable, shape: usize, start: usize, place: usize) -> Option<&Row> {
+        (start + place >= timetable.tracks[shape].first).then(|| &self.states[shape].concentrations[place])
     }
 }
 
@@ -170,7 +188,7 @@ struct Folding<'a> {
     spans: &'a [f64],
     matrix: &'a mut Step,
     infused: &'a mut Infused,
-    entry: &'a Row,
+    entry: &'a Entry,
 }
 
 impl Folding<'_> {
@@ -186,11 +204,11 @@ impl Folding<'_> {
 
     fn fold(&mut self, track: &Track, fold: &Fold, state: &mut State) {
         let peripheral = self.structure.peripheral.is_some();
+        let entry = if track.oral { &self.entry.mouth } else { &self.entry.blood };
         match *fold {
-            Fold::Dose { ago: None } if track.oral => add(&mut state.gut, self.entry),
-            Fold::Dose { ago: None } => add(&mut state.central, &Row::splat(1.0)),
+            Fold::Dose { ago: None } if track.oral => add(&mut state.gut, entry),
+            Fold::Dose { ago: None } => add(&mut state.central, entry),
             Fold::Dose { ago: Some(span) } => {
-                let entry = self.entry;
                 let matrix = self.of(span);
                 if track.oral {
                     add_product(&mut state.gut, entry, &matrix.gg);
@@ -199,15 +217,16 @@ impl Folding<'_> {
                         add_product(&mut state.peripheral, entry, &matrix.pg);
                     }
                 } else {
-                    add(&mut state.central, &matrix.cc);
+                    add_product(&mut state.central, entry, &matrix.cc);
                     if peripheral {
-                        add(&mut state.peripheral, &matrix.pc);
+                        add_product(&mut state.peripheral, entry, &matrix.pc);
                     }
                 }
             }
             Fold::Ran { ran, ago } => {
+                let mut rate = *entry;
+                scale(&mut rate, &Row::splat(1.0 / track.over.expect("an infusion has a length")));
                 self.infused.fill(self.structure, self.rates, self.spans[ran]);
-                let rate = Row::splat(1.0 / track.over.expect("an infusion has a length"));
                 scale(&mut self.infused.central, &rate);
                 scale(&mut self.infused.peripheral, &rate);
                 let Some(span) = ago else {
@@ -230,21 +249,25 @@ impl Folding<'_> {
     }
 
     /// Doses whose lag of each lane's own brings them in since the output time before.
-    /// Says whether any may have.
-    fn lagged(&mut self, track: &Track, times: &[f64], index: usize, lag: &Row, state: &mut State) -> bool {
+    fn lagged(
+        &mut self,
+        track: &Track,
+        times: &[f64],
+        index: usize,
+        lag: &Row,
+        (shortest, longest): (f64, f64),
+        state: &mut State,
+    ) {
         let now = times[index];
         let before = if index == 0 { f64::NEG_INFINITY } else { times[index - 1] };
-        let (shortest, longest) = lag.iter().fold((f64::INFINITY, 0.0f64), |(a, b), &l| (a.min(l), b.max(l)));
         // Doses that have reached the last lane are done with.
         while state.pending < track.lagged.len() && track.lagged[state.pending] + longest <= before {
             state.pending += 1;
         }
-        let mut entered = false;
         for &dose in track.lagged[state.pending..].iter().take_while(|&&dose| dose + shortest <= now) {
-            entered = true;
             let mut ago = Row::ZERO;
             let mut entering = Row::ZERO;
-            enters(dose, lag, before, now, self.entry, &mut ago, &mut entering);
+            enters(dose, lag, before, now, &self.entry.mouth, &mut ago, &mut entering);
             self.matrix.fill_from_gut(self.structure, self.rates, &ago);
             add_product(&mut state.gut, &entering, &self.matrix.gg);
             add_product(&mut state.central, &entering, &self.matrix.cg);
@@ -252,7 +275,6 @@ impl Folding<'_> {
                 add_product(&mut state.peripheral, &entering, &self.matrix.pg);
             }
         }
-        entered
     }
 }
 
@@ -267,65 +289,62 @@ fn enters(dose: f64, lag: &Row, before: f64, now: f64, entry: &Row, ago: &mut Ro
     }
 }
 
-// The loops below read all they need before they write: rows lie 2 KiB apart, and a load that follows a store to the same place in
-// another page waits for it.
-
-#[multiversion(targets("x86_64+avx512f+avx512bw+avx512dq+avx512vl", "x86_64+avx2"))]
-fn advance_c(m: &Step, per_volume: &Row, state: &mut State) {
-    for lane in 0..LANES {
-        let central = m.cc.0[lane] * state.central.0[lane];
-        let concentration = central * per_volume.0[lane];
-        state.central.0[lane] = central;
-        state.concentration.0[lane] = concentration;
-    }
+/// Amounts that a run carries from one output time to the next.
+struct Amounts<'a> {
+    gut: &'a mut Row,
+    central: &'a mut Row,
+    peripheral: &'a mut Row,
 }
 
 #[multiversion(targets("x86_64+avx512f+avx512bw+avx512dq+avx512vl", "x86_64+avx2"))]
-fn advance_gc(m: &Step, per_volume: &Row, state: &mut State) {
-    for lane in 0..LANES {
-        let (g, c) = (state.gut.0[lane], state.central.0[lane]);
-        let gut = m.gg.0[lane] * g;
-        let central = m.cc.0[lane] * c + m.cg.0[lane] * g;
-        let concentration = central * per_volume.0[lane];
-        state.gut.0[lane] = gut;
-        state.central.0[lane] = central;
-        state.concentration.0[lane] = concentration;
+fn run(gut: bool, peripheral: bool, matrix: &Step, amounts: Amounts<'_>, rows: &mut [Row]) {
+    match (gut, peripheral) {
+        (false, false) => steps::<false, false>(matrix, amounts, rows),
+        (false, true) => steps::<false, true>(matrix, amounts, rows),
+        (true, false) => steps::<true, false>(matrix, amounts, rows),
+        (true, true) => steps::<true, true>(matrix, amounts, rows),
     }
 }
 
-#[multiversion(targets("x86_64+avx512f+avx512bw+avx512dq+avx512vl", "x86_64+avx2"))]
-fn advance_cp(m: &Step, per_volume: &Row, state: &mut State) {
-    for lane in 0..LANES {
-        let (c, p) = (state.central.0[lane], state.peripheral.0[lane]);
-        let central = m.cc.0[lane] * c + m.cp.0[lane] * p;
-        let peripheral = m.pp.0[lane] * p + m.pc.0[lane] * c;
-        let concentration = central * per_volume.0[lane];
-        state.central.0[lane] = central;
-        state.peripheral.0[lane] = peripheral;
-        state.concentration.0[lane] = concentration;
+/// Lanes that go through all rows of a run together: few enough for their amounts and matrix to stay in registers.
+const ABREAST: usize = 8;
+
+/// One step for each of `rows`, which take the central amounts.
+#[inline(always)]
+fn steps<const GUT: bool, const PERIPHERAL: bool>(m: &Step, amounts: Amounts<'_>, rows: &mut [Row]) {
+    for first in (0..LANES).step_by(ABREAST) {
+        let (cc, cp, cg) = (lanes(&m.cc, first), lanes(&m.cp, first), lanes(&m.cg, first));
+        let (pp, pc, pg) = (lanes(&m.pp, first), lanes(&m.pc, first), lanes(&m.pg, first));
+        let gg = lanes(&m.gg, first);
+        let mut gut = lanes(amounts.gut, first);
+        let mut central = lanes(amounts.central, first);
+        let mut peripheral = lanes(amounts.peripheral, first);
+        for row in &mut *rows {
+            for lane in 0..ABREAST {
+                let (g, c, p) = (gut[lane], central[lane], peripheral[lane]);
+                let mut next = cc[lane] * c;
+                if PERIPHERAL {
+                    next += cp[lane] * p;
+                    let kept = pp[lane] * p + pc[lane] * c;
+                    peripheral[lane] = if GUT { kept + pg[lane] * g } else { kept };
+                }
+                if GUT {
+                    next += cg[lane] * g;
+                    gut[lane] = gg[lane] * g;
+                }
+                central[lane] = next;
+            }
+            row.0[first..first + ABREAST].copy_from_slice(&central);
+        }
+        amounts.gut.0[first..first + ABREAST].copy_from_slice(&gut);
+        amounts.central.0[first..first + ABREAST].copy_from_slice(&central);
+        amounts.peripheral.0[first..first + ABREAST].copy_from_slice(&peripheral);
     }
 }
 
-#[multiversion(targets("x86_64+avx512f+avx512bw+avx512dq+avx512vl", "x86_64+avx2"))]
-fn advance_gcp(m: &Step, per_volume: &Row, state: &mut State) {
-    for lane in 0..LANES {
-        let (g, c, p) = (state.gut.0[lane], state.central.0[lane], state.peripheral.0[lane]);
-        let gut = m.gg.0[lane] * g;
-        let central = (m.cc.0[lane] * c + m.cp.0[lane] * p) + m.cg.0[lane] * g;
-        let peripheral = (m.pp.0[lane] * p + m.pc.0[lane] * c) + m.pg.0[lane] * g;
-        let concentration = central * per_volume.0[lane];
-        state.gut.0[lane] = gut;
-        state.central.0[lane] = central;
-        state.peripheral.0[lane] = peripheral;
-        state.concentration.0[lane] = concentration;
-    }
-}
-
-#[multiversion(targets("x86_64+avx512f+avx512bw+avx512dq+avx512vl", "x86_64+avx2"))]
-fn multiply(one: &Row, other: &Row, product: &mut Row) {
-    for lane in 0..LANES {
-        product.0[lane] = one.0[lane] * other.0[lane];
-    }
+#[inline(always)]
+fn lanes(row: &Row, first: usize) -> [f64; ABREAST] {
+    row.0[first..first + ABREAST].try_into().expect("as many lanes as asked for")
 }
 
 #[multiversion(targets("x86_64+avx512f+avx512bw+avx512dq+avx512vl", "x86_64+avx2"))]

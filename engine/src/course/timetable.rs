@@ -42,6 +42,19 @@ pub struct Track {
     pub over: Option<f64>,
 }
 
+impl Track {
+    /// Whether nothing enters at output time `index`, by the shortest and the longest lag of a block and the first dose that is not
+    /// done with.
+    pub(super) fn quiet(&self, times: &[f64], index: usize, pending: usize, (shortest, longest): (f64, f64)) -> bool {
+        let before = if index == 0 { f64::NEG_INFINITY } else { times[index - 1] };
+        self.folds[index].is_empty()
+            && !self.lagged[pending.min(self.lagged.len())..]
+                .iter()
+                .take_while(|&&dose| dose + shortest <= times[index])
+                .any(|&dose| dose + longest > before)
+    }
+}
+
 /// The whole schedule.
 #[derive(Clone, Debug)]
 pub struct Timetable {

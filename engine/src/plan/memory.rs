@@ -43,7 +43,8 @@ impl Plan {
     /// Bytes of the blocks in work, all threads together.
     pub fn block_bytes(&self) -> u64 {
         let rows = self.cohort.len() + 2 * self.individuals.len() + self.individuals.scratch();
-        let march = 8 + 7 * (2 + crate::course::KEPT_STEPS) + 4 * self.protocol.shapes.len() + 8;
+        let march =
+            8 + 7 * (2 + crate::course::KEPT_STEPS) + (4 + crate::course::AT_A_TIME) * self.protocol.shapes.len() + 8;
         (self.limits().threads * (rows + march) * size_of::<Row>()) as u64
     }
 

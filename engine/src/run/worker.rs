@@ -2,7 +2,7 @@
 
 use std::time::Instant;
 
-use crate::course::March;
+use crate::course::{AT_A_TIME, March};
 use crate::math::{LANES, Row};
 use crate::plan::Plan;
 use crate::scenario::Amount;
@@ -53,17 +53,22 @@ impl<'a> Worker<'a> {
         let (plan, parameters) = (self.plan, &self.parameters);
         self.march.start(&plan.timetable, |role| plan.individuals.index(role).map(|index| &parameters[index]));
         let times = plan.timetable.times.len();
-        for index in 0..until {
-            self.march.advance(&plan.timetable, index);
+        for start in (0..until).step_by(AT_A_TIME) {
+            let end = until.min(start + AT_A_TIME);
+            self.march.advance(&plan.timetable, start..end);
             clock.lap(|clock| &mut clock.solving);
-            for arm in 0..plan.protocol.arms.len() {
-                let series = arm * times + index;
-                if index + 1 < until {
-                    sink.soon(series + 1);
-                }
-                if sink.wants(series) {
-                    let (row, scale) = concentration(plan, &self.march, &self.covariates, arm, &mut self.mix);
-                    sink.signal(series, row, scale);
+            for index in start..end {
+                for arm in 0..plan.protocol.arms.len() {
+                    let series = arm * times + index;
+                    if index + 1 < until {
+                        sink.soon(series + 1);
+                    }
+                    if sink.wants(series) {
+                        let rows =
+                            Rows { march: &self.march, covariates: &self.covariates, start, place: index - start };
+                        let (row, scale) = rows.concentration(plan, arm, &mut self.mix);
+                        sink.signal(series, row, scale);
+                    }
                 }
             }
             clock.lap(|clock| &mut clock.counting);
@@ -105,30 +110,36 @@ impl<'a> Stopwatch<'a> {
     }
 }
 
-/// Concentration of an arm at the output time that the march stands at, as a row and a factor on all of it.
-fn concentration<'r>(
-    plan: &Plan,
+/// What a block has at one output time.
+struct Rows<'r> {
     march: &'r March,
-    covariates: &[Row],
-    arm: usize,
-    mix: &'r mut Row,
-) -> (&'r Row, f64) {
-    let given = &plan.protocol.arms[arm];
-    if let [only] = given.as_slice()
-        && let Amount::Flat(amount) = only.amount
-        && let Some(row) = march.concentration(only.shape)
-    {
-        return (row, amount);
-    }
-    *mix = Row::ZERO;
-    for given in given {
-        let Some(row) = march.concentration(given.shape) else { continue };
-        match given.amount {
-            Amount::Flat(amount) => add(mix, row, amount),
-            Amount::Per { covariate, amount } => add_per(mix, row, &covariates[covariate], amount),
+    covariates: &'r [Row],
+    /// First output time that the march last advanced to, and how many after it this one is.
+    start: usize,
+    place: usize,
+}
+
+impl<'r> Rows<'r> {
+    /// Concentration of an arm, as a row and a factor on all of it.
+    fn concentration(&self, plan: &Plan, arm: usize, mix: &'r mut Row) -> (&'r Row, f64) {
+        let of = |shape| self.march.concentration(&plan.timetable, shape, self.start, self.place);
+        let given = &plan.protocol.arms[arm];
+        if let [only] = given.as_slice()
+            && let Amount::Flat(amount) = only.amount
+            && let Some(row) = of(only.shape)
+        {
+            return (row, amount);
         }
+        *mix = Row::ZERO;
+        for given in given {
+            let Some(row) = of(given.shape) else { continue };
+            match given.amount {
+                Amount::Flat(amount) => add(mix, row, amount),
+                Amount::Per { covariate, amount } => add_per(mix, row, &self.covariates[covariate], amount),
+            }
+        }
+        (mix, 1.0)
     }
-    (mix, 1.0)
 }
 
 #[multiversion::multiversion(targets("x86_64+avx512f+avx512bw+avx512dq+avx512vl", "x86_64+avx2"))]
