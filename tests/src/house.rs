@@ -102,7 +102,7 @@ pub fn tokens(text: &str) -> Vec<Token> {
                 i += 1;
             }
             let word: String = chars[start..i].iter().collect();
-            let hashes = (i..).take_while(|&j| at(j) == '#').count();
+            let hashes = (i..chars.len()).take_while(|&j| at(j) == '#').count();
             if ["r", "br", "cr"].contains(&word.as_str()) && at(i + hashes) == '"' {
                 let end: String = std::iter::once('"').chain("#".repeat(hashes).chars()).collect();
                 let rest: String = chars[i + hashes + 1..].iter().collect();

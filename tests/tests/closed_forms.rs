@@ -1,14 +1,17 @@
 //! One patient without variability is the textbook curve: every one- and two-compartment case of
 //! `reference/compartments/` (34 digits, two unrelated routes), through the public interface alone.
 
-use std::fmt::Write as _;
-use std::sync::Arc;
+#![expect(clippy::print_stdout, reason = "a test reports its worst error")]
 
-use neap_engine::course::March;
+use std::fmt::Write as _;
+
+use neap_engine::kinetics::{Infused, Rates, Step};
+use neap_engine::math::Row;
 use neap_engine::plan::Plan;
+use neap_engine::quantity::to_f64;
 use neap_engine::run::Watch;
-use neap_engine::scenario::{Amount, Role};
-use neap_tests::{json, number, plan, scenario};
+use neap_engine::scenario::{Amount, Role, Route};
+use neap_tests::{json, number, patients, plan, scenario};
 use serde_json::Value;
 
 /// Relative accuracy that is promised for values of linear models.
@@ -93,27 +96,57 @@ fn error(got: f64, expected: f64) -> f64 {
     if expected.abs() < TINY { difference / TINY * PROMISED } else { difference / expected.abs() }
 }
 
-/// Amounts in gut, central and peripheral compartment at each output time, all dose rows together.
-fn amounts(plan: &Arc<Plan>) -> Vec<[f64; 3]> {
-    let mut block = None;
-    plan.for_each_block(&Watch::new(), &mut |patients| {
-        block = Some(patients.clone());
-        Ok(())
-    })
-    .expect("nobody stops it");
-    let rows: Vec<neap_engine::math::Row> =
-        block.expect("one patient").parameters.iter().map(|column| neap_engine::math::Row::splat(column[0])).collect();
-    let parameter = |role: Role| plan.individuals.index(role).map(|index| &rows[index]);
-    let mut march = March::new(plan.structure, &plan.timetable);
-    march.start(&plan.timetable, parameter);
-    (0..plan.timetable.times.len())
-        .map(|index| {
-            march.advance(&plan.timetable, index);
+/// Amounts in gut, central and peripheral compartment at each output time, by the step matrices of the solver: each dose
+/// decays on its own, and the doses add up.
+fn amounts(plan: &Plan) -> Vec<[f64; 3]> {
+    let rows: Vec<Row> = patients(plan).parameters.iter().map(|column| Row::splat(column[0])).collect();
+    let row = |role: Role| plan.individuals.index(role).map(|index| &rows[index]);
+    let structure = &plan.structure;
+    let mut rates = Rates::default();
+    rates.fill(structure, |role| row(role).expect("the model has its parameters"));
+    let one = |role: Role, otherwise: f64| row(role).map_or(otherwise, |row| row[0]);
+    let (lag, fraction) = (one(Role::LagTime, 0.0), one(Role::Bioavailability, 1.0));
+    let matrix = |hours: f64| {
+        let mut step = Step::default();
+        step.fill(structure, &rates, &Row::splat(hours));
+        step
+    };
+    let scenario = plan.scenario();
+    let doses: Vec<_> =
+        scenario.arms[0].doses.iter().flat_map(|dose| dose.times.iter().map(move |at| (dose, at))).collect();
+    scenario
+        .output
+        .times
+        .iter()
+        .map(|now| {
             let mut sum = [0.0; 3];
-            for given in &plan.protocol.arms[0] {
-                let Amount::Flat(amount) = given.amount else { panic!("amounts are flat here") };
-                for (sum, row) in sum.iter_mut().zip(march.amounts(given.shape)) {
-                    *sum += amount * row[0];
+            for (dose, at) in &doses {
+                let Amount::Flat(amount) = dose.amount else { panic!("amounts are flat here") };
+                let since = to_f64(&(now - *at));
+                let entered = if dose.route == Route::Oral { since - lag } else { since };
+                if entered < 0.0 {
+                    continue;
+                }
+                let part = match &dose.route {
+                    Route::Oral => {
+                        let step = matrix(entered);
+                        [step.gg[0], step.cg[0], step.pg[0]].map(|part| part * fraction)
+                    }
+                    Route::Bolus => {
+                        let step = matrix(entered);
+                        [0.0, step.cc[0], step.pc[0]]
+                    }
+                    Route::Infusion { over } => {
+                        let over = to_f64(over);
+                        let mut infused = Infused::default();
+                        infused.fill(structure, &rates, entered.min(over));
+                        let (central, tissue) = (infused.central[0] / over, infused.peripheral[0] / over);
+                        let step = matrix((entered - over).max(0.0));
+                        [0.0, step.cc[0] * central + step.cp[0] * tissue, step.pc[0] * central + step.pp[0] * tissue]
+                    }
+                };
+                for (sum, part) in sum.iter_mut().zip(part) {
+                    *sum += amount * part;
                 }
             }
             sum

@@ -1,5 +1,7 @@
 //! Monte Carlo intervals and percentiles against values computed elsewhere (see `reference/README.md`).
 
+#![expect(clippy::print_stdout, reason = "a test reports its worst error")]
+
 use neap_engine::quantity::Exact;
 use neap_engine::summary::{Ranks, order_statistic_ranks, wilson};
 use neap_tests::{csv, number};

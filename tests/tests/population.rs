@@ -3,6 +3,8 @@
 //! Seeds are fixed, so a check passes or fails for good; its false-alarm rate is the chance that a correct simulator fails
 //! it under a seed chosen blindly. It is stated at each check.
 
+#![expect(clippy::print_stdout, reason = "a test reports its worst error")]
+
 use std::fmt::Write as _;
 
 use neap_engine::cohort::quantile;
