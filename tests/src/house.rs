@@ -2,11 +2,11 @@
 
 use std::fmt::Write as _;
 
-/// The modules of the engine: a module imports only from rows above its own. Modules of one row stand side by side: the
-/// later may import the earlier.
+/// The modules of the engine: a module imports only from rows above its own. Of two in one row the
+/// second may import the first.
 pub const HOUSE: [&[&str]; 13] = [
     &["math"],
-    &["quantity", "diagnostic"],
+    &["diagnostic", "quantity"],
     &["scenario"],
     &["draw"],
     &["cohort"],
@@ -102,7 +102,7 @@ pub fn tokens(text: &str) -> Vec<Token> {
                 i += 1;
             }
             let word: String = chars[start..i].iter().collect();
-            let hashes = (i..).take_while(|&j| at(j) == '#').count();
+            let hashes = (i..chars.len()).take_while(|&j| at(j) == '#').count();
             if ["r", "br", "cr"].contains(&word.as_str()) && at(i + hashes) == '"' {
                 let end: String = std::iter::once('"').chain("#".repeat(hashes).chars()).collect();
                 let rest: String = chars[i + hashes + 1..].iter().collect();

@@ -13,6 +13,9 @@ use neap_engine::run::{PatientBlock, Results, Watch};
 use neap_engine::scenario::Scenario;
 
 /// The top level of the project.
+///
+/// # Panics
+/// Never: the member lies in the workspace.
 pub fn top_level() -> PathBuf {
     Path::new(env!("CARGO_MANIFEST_DIR")).parent().expect("the member lies in the workspace").to_owned()
 }
@@ -170,6 +173,9 @@ pub fn patients(plan: &Plan) -> PatientBlock {
 }
 
 /// Every number of some results that is under the contract of identical bytes, named.
+///
+/// # Panics
+/// If two facts have one name.
 pub fn facts(results: &Results) -> BTreeMap<String, u64> {
     let mut facts = BTreeMap::new();
     let mut add = |name: String, bits: u64| assert!(facts.insert(name.clone(), bits).is_none(), "two facts `{name}`");

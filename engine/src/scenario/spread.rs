@@ -4,7 +4,7 @@
 use super::chance::LEAST_HELD;
 use super::covariates::{Frame, one_of, only};
 use super::measure::Measured;
-use super::portable::{NORMAL_95, ln};
+use super::portable::{NORMAL_95, ln, ln_one_plus};
 use super::reader::{Reader, Section};
 use super::{Distribution, Limited};
 use crate::diagnostic::{Diagnostic, Span};
@@ -174,14 +174,14 @@ fn lognormal(reader: &mut Reader, section: &Section, frame: &mut Frame) -> Optio
     let log_variance = match exactly_one(reader, section, &["cv", "sd", "log_sd", "log_variance"], "the spread")? {
         "cv" => {
             let cv = to_f64(&reader.share(section, "cv")?.0);
-            ln(1.0 + cv * cv)
+            ln_one_plus(cv * cv)
         }
         "sd" => {
             let (sd, measured) = frame.value(reader, section, "sd")?;
             let ratio = not_negative(reader, "sd", (sd, measured.span))? / value?;
-            // About the mean, exp(s^2) = 1 + (sd / mean)^2; about the median it is the root of w (w - 1) = (sd / median)^2.
-            let w = if of_mean { 1.0 + ratio * ratio } else { 0.5 + (0.25 + ratio * ratio).sqrt() };
-            ln(w)
+            // With exp(s^2) = 1 + u: about the mean u = (sd / mean)^2; about the median (1 + u) u = (sd / median)^2.
+            let square = ratio * ratio;
+            ln_one_plus(if of_mean { square } else { square / (0.5 + (0.25 + square).sqrt()) })
         }
         "log_sd" => {
             let (log_sd, at) = reader.number(section, "log_sd")?;

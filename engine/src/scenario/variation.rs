@@ -2,7 +2,7 @@
 
 use super::chance::{LEAST_HELD, normal_between};
 use super::measure::{Wants, beyond};
-use super::portable::ln;
+use super::portable::{ln, ln_one_plus};
 use super::reader::{Reader, Section};
 use super::roles::Kind;
 use super::spread::{LARGEST_LOG_SD, exactly_one, limits as bounds};
@@ -80,7 +80,7 @@ fn spread(reader: &mut Reader, section: &Section, key: &str, form: &str) -> Opti
         _ if value == 0.0 => Varies::Not,
         ("normal", _) => Varies::Normal { cv: value },
         ("logit-normal", _) => Varies::LogitNormal { logit_sd: value },
-        (_, "cv") => Varies::Lognormal { log_sd: ln(1.0 + value * value).sqrt() },
+        (_, "cv") => Varies::Lognormal { log_sd: ln_one_plus(value * value).sqrt() },
         _ => Varies::Lognormal { log_sd },
     })
 }
