@@ -2,7 +2,7 @@
 
 use super::Plan;
 use crate::course::{AT_A_TIME, KEPT_RUNS, KEPT_STEPS};
-use crate::math::{LANES, Row};
+use crate::math::{LANES, Row, chunk_for};
 
 /// Up to so many patients every value is kept: a pilot would not pay.
 pub const DIRECT: u64 = 8192;
@@ -13,11 +13,14 @@ const PILOT_PART: u64 = 24;
 /// No pilot is larger: its histograms count in 32 bits.
 const LARGEST_PILOT: u64 = 1 << 26;
 
-/// Growing a list moves it: while it does, old and new stand side by side, a quarter apart.
-const GROWTH: f64 = 1.3;
+/// Kept values as the pilot expects them may turn out a little more.
+const MARGIN: f64 = 1.05;
 
-/// Bytes a series takes beside its kept values: counts, and the room that a block may need, for one worker.
-const SERIES_BYTES: u64 = 8 * (LANES as u64 + 64) + 256;
+/// Bytes a series takes beside its kept values: counts and headers, for one worker.
+const SERIES_BYTES: u64 = 512;
+
+/// What the process takes before it keeps anything: code, tables on their way out, the allocator's own.
+const PROCESS_BYTES: u64 = 24 << 20;
 
 /// Patients in the pilot of a run; `None` where all values are kept.
 pub fn pilot_size(patients: u64) -> Option<u64> {
@@ -30,7 +33,10 @@ pub fn tiles(shares: &[f64], patients: u64, threads: usize, budget: u64) -> Vec<
     let mut out = Vec::new();
     let (mut start, mut filled) = (0, 0.0);
     for (index, share) in shares.iter().enumerate() {
-        let bytes = share * patients as f64 * 8.0 * GROWTH + (SERIES_BYTES * threads as u64) as f64;
+        let expected = share * patients as f64;
+        // Each worker's last chunk is half empty on average.
+        let chunk = chunk_for((expected / threads as f64) as usize) as u64;
+        let bytes = expected * 8.0 * MARGIN + (threads as u64 * (4 * chunk + SERIES_BYTES)) as f64;
         if index > start && filled + bytes > budget as f64 {
             out.push(start..index);
             (start, filled) = (index, 0.0);
@@ -53,12 +59,12 @@ impl Plan {
 
     /// Bytes left for kept values.
     pub fn budget(&self) -> u64 {
-        self.limits().memory.saturating_sub(self.block_bytes())
+        self.limits().memory.saturating_sub(self.block_bytes() + PROCESS_BYTES)
     }
 
     /// The least that a run of this plan works in: blocks, every series' order statistics, and one tile of some size.
     pub(super) fn least_memory(&self) -> u64 {
-        self.block_bytes() + self.signals() as u64 * 1024 + (4 << 20)
+        PROCESS_BYTES + self.block_bytes() + self.signals() as u64 * 1024 + (4 << 20)
     }
 }
 

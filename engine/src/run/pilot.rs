@@ -8,8 +8,10 @@ use crate::math::{LANES, Row};
 use crate::plan::Plan;
 use crate::summary::{CELLS, Cells, Pilot, Ranks, Search};
 
-/// Patients whose covariates and parameters are all kept to place the searches for their percentiles.
-const POPULATION: u64 = 4096;
+/// Patients whose covariates and parameters are all kept to place the searches for their percentiles: one in so many, within
+/// these bounds.
+const POPULATION_PART: u64 = 256;
+const POPULATION: (u64, u64) = (4096, 262_144);
 
 /// What to search for in every series of `patients` patients: signals, then quantities.
 pub(super) fn searches(
@@ -54,7 +56,7 @@ pub(super) fn searches(
             found.push(pilot.search(sample, *cells, &histogram, plan.window));
         }
     }
-    let size = POPULATION.min(size);
+    let size = (patients / POPULATION_PART).clamp(POPULATION.0, POPULATION.1).min(size);
     let pilot = Pilot::new(quantities, patients, size);
     let population = population(plan, size).iter().map(|sorted| pilot.search_sorted(sorted)).collect();
     Ok((found, population))

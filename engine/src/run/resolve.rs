@@ -103,7 +103,10 @@ pub(super) fn resolve(plan: &Plan, patients: u64, wanted: &Wanted<'_>, watch: &W
         let pending: Vec<usize> = (0..signals.len()).filter(|&index| signals[index].is_some()).collect();
         let shares: Vec<f64> =
             pending.iter().map(|&index| signals[index].as_ref().map_or(0.0, |quest| quest.search.share)).collect();
-        let mut rounds: Vec<Vec<usize>> = tiles(&shares, patients, plan.limits().threads, plan.budget())
+        // The quantities of the population go along with the first tile.
+        let along: f64 = quantities.iter().flatten().map(|quest| quest.search.share).sum();
+        let budget = plan.budget().saturating_sub((along * patients as f64 * 8.0) as u64);
+        let mut rounds: Vec<Vec<usize>> = tiles(&shares, patients, plan.limits().threads, budget)
             .into_iter()
             .map(|tile| pending[tile].to_vec())
             .collect();

@@ -80,10 +80,7 @@ impl Partial {
         assert_eq!((self.kept.len(), self.moments.len()), (other.kept.len(), other.moments.len()), "same searches");
         self.patients += other.patients;
         for (mine, theirs) in self.kept.iter_mut().zip(&other.kept) {
-            add(&mut mine.from_bracket, &theirs.from_bracket);
-            add(&mut mine.in_bracket, &theirs.in_bracket);
-            add(&mut mine.from_edge, &theirs.from_edge);
-            mine.values.extend_from_slice(&theirs.values);
+            mine.merge(theirs);
         }
         for (mine, theirs) in self.moments.iter_mut().zip(&other.moments) {
             mine.merge(theirs);
@@ -94,9 +91,9 @@ impl Partial {
     pub fn to_words(&self) -> Vec<u64> {
         let mut words = vec![self.patients, self.kept.len() as u64, self.moments.len() as u64];
         for kept in &self.kept {
-            words.extend([kept.from_bracket.len() as u64, kept.from_edge.len() as u64, kept.values.len() as u64]);
+            words.extend([kept.from_bracket.len() as u64, kept.from_edge.len() as u64, kept.kept() as u64]);
             words.extend(kept.from_bracket.iter().chain(&kept.in_bracket).chain(&kept.from_edge));
-            words.extend(kept.values.iter().map(|value| value.to_bits()));
+            words.extend(kept.lists().flatten().map(|value| value.to_bits()));
         }
         for moments in &self.moments {
             words.extend(moments.sum.to_words());
@@ -117,24 +114,15 @@ impl Partial {
         let mut partial = Self { patients, ..Self::default() };
         for _ in 0..series {
             let &[brackets, edges, values] = take(3)? else { return None };
-            partial.kept.push(Kept {
-                from_bracket: take(brackets)?.to_vec(),
-                in_bracket: take(brackets)?.to_vec(),
-                from_edge: take(edges)?.to_vec(),
-                values: take(values)?.iter().map(|&bits| f64::from_bits(bits)).collect(),
-            });
+            let (from_bracket, in_bracket, from_edge) = (take(brackets)?, take(brackets)?, take(edges)?);
+            let values = take(values)?.iter().map(|&bits| f64::from_bits(bits)).collect();
+            partial.kept.push(Kept::stored(from_bracket.to_vec(), in_bracket.to_vec(), from_edge.to_vec(), values));
         }
         let mut sum = || ExactSum::from_words(take(SUM_WORDS as u64)?.try_into().ok()?);
         for _ in 0..quantities {
             partial.moments.push(Moments { sum: sum()?, squares: sum()? });
         }
         rest.is_empty().then_some(partial)
-    }
-}
-
-fn add(mine: &mut [u64], theirs: &[u64]) {
-    for (mine, theirs) in mine.iter_mut().zip(theirs) {
-        *mine += theirs;
     }
 }
 
@@ -179,7 +167,10 @@ mod tests {
     /// Kept values in rising order: the order they came in is not part of what a partial means.
     fn sorted(mut partial: Partial) -> Partial {
         for kept in &mut partial.kept {
-            kept.values.sort_by(f64::total_cmp);
+            let mut values: Vec<f64> = kept.lists().flatten().copied().collect();
+            values.sort_by(f64::total_cmp);
+            let (brackets, inside) = (kept.from_bracket.clone(), kept.in_bracket.clone());
+            *kept = Kept::stored(brackets, inside, kept.from_edge.clone(), values);
         }
         partial
     }
@@ -203,7 +194,7 @@ mod tests {
         fn stored_and_read_back_it_is_the_same(blocks in prop::collection::vec((any::<u64>(), 0..=LANES), 0..4)) {
             let partial = absorbed(&blocks);
             let words = partial.to_words();
-            prop_assert_eq!(Partial::from_words(&words), Some(partial));
+            prop_assert_eq!(Partial::from_words(&words).map(sorted), Some(sorted(partial)));
             prop_assert_eq!(Partial::from_words(&words[..words.len() - 1]), None);
         }
     }

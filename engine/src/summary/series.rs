@@ -98,7 +98,7 @@ impl Search {
         let mut found = vec![Found::Between(f64::NEG_INFINITY, f64::INFINITY, patients); ranks.len()];
         // Everything that is known, in rising order: a value and how many values lie below it.
         let mut known: Vec<(f64, u64)> = Vec::new();
-        let lists: Vec<&[f64]> = kept.iter().map(|kept| kept.values.as_slice()).collect();
+        let lists: Vec<&[f64]> = kept.iter().flat_map(|kept| kept.lists()).collect();
         let brackets = self.sieve.brackets();
         let held = |index: usize| kept.iter().map(|kept| kept.in_bracket[index]).sum::<u64>();
         for (index, &(low, high)) in brackets.iter().enumerate() {

@@ -5,4 +5,4 @@ mod narrow;
 mod sift;
 
 pub use narrow::narrow;
-pub use sift::{Kept, Sieve};
+pub use sift::{Kept, Sieve, chunk_for};

@@ -24,11 +24,50 @@ pub struct Kept {
     pub in_bracket: Vec<u64>,
     /// Values at or above each edge.
     pub from_edge: Vec<u64>,
-    /// Values within any bracket, in the order they came.
+    /// Values within any bracket, in the order they came: the last of them. Chunks that are full stand in `full`: nothing is ever
+    /// moved, so memory is what was kept and no more.
     pub values: Vec<f64>,
+    /// Values that came before.
+    pub full: Vec<Vec<f64>>,
+    /// Values in a chunk.
+    chunk: usize,
+}
+
+/// Values that a chunk holds at the most: small enough to be used again for whatever comes next.
+const LARGEST_CHUNK: usize = 8192;
+
+/// A chunk for a list of some expected length: an eighth of it.
+pub fn chunk_for(expected: usize) -> usize {
+    (expected / 8).clamp(64, LARGEST_CHUNK) + ROOM
 }
 
 impl Kept {
+    /// All kept values, chunk by chunk.
+    pub fn lists(&self) -> impl Iterator<Item = &[f64]> {
+        self.full.iter().chain(std::iter::once(&self.values)).map(Vec::as_slice)
+    }
+
+    /// How many values are kept.
+    pub fn kept(&self) -> usize {
+        self.lists().map(<[f64]>::len).sum()
+    }
+
+    /// Counts and values read back from a store.
+    pub fn stored(from_bracket: Vec<u64>, in_bracket: Vec<u64>, from_edge: Vec<u64>, values: Vec<f64>) -> Self {
+        Self { from_bracket, in_bracket, from_edge, values, full: Vec::new(), chunk: chunk_for(0) }
+    }
+
+    /// Adds another's counts and values.
+    pub fn merge(&mut self, other: &Self) {
+        let add = |mine: &mut Vec<u64>, theirs: &Vec<u64>| {
+            mine.iter_mut().zip(theirs).for_each(|(mine, theirs)| *mine += theirs);
+        };
+        add(&mut self.from_bracket, &other.from_bracket);
+        add(&mut self.in_bracket, &other.in_bracket);
+        add(&mut self.from_edge, &other.from_edge);
+        self.full.extend(other.lists().map(<[f64]>::to_vec));
+    }
+
     /// Asks the processor to fetch the lines that the next block's values will be written to. Each series has a list of its own,
     /// whose end has long left the cache; without this, stores to it hold up all that follow.
     #[inline]
@@ -83,21 +122,23 @@ impl Sieve {
 
     /// Empty counts for this sieve, with room for `expected` kept values.
     pub fn nothing(&self, expected: usize) -> Kept {
-        let room = if self.brackets.is_empty() { 0 } else { expected + ROOM };
+        let chunk = chunk_for(expected);
+        let room = if self.brackets.is_empty() { 0 } else { chunk };
         Kept {
             from_bracket: vec![0; self.brackets.len()],
             in_bracket: vec![0; self.brackets.len()],
             from_edge: vec![0; self.edges.len()],
             values: Vec::with_capacity(room),
+            full: Vec::new(),
+            chunk,
         }
     }
 
     /// Sifts the first `count` lanes of `row`, each times `scale`.
     pub fn sift(&self, row: &Row, scale: f64, count: usize, kept: &mut Kept) {
-        let length = kept.values.len();
-        if !self.brackets.is_empty() && kept.values.capacity() < length + ROOM {
-            // A quarter more at a time: what a pass keeps is bounded by a budget.
-            kept.values.reserve_exact(ROOM.max(length / 4));
+        if !self.brackets.is_empty() && kept.values.capacity() - kept.values.len() < ROOM {
+            let next = Vec::with_capacity(kept.chunk.max(ROOM));
+            kept.full.push(std::mem::replace(&mut kept.values, next));
         }
         #[cfg(target_arch = "x86_64")]
         if count == LANES && avx512::available() {
