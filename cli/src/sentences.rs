@@ -2,7 +2,6 @@
 
 use std::fmt::Write;
 
-use neap_engine::model::{role_name, role_unit};
 use neap_engine::plan::{Explanation, Plan};
 use neap_engine::quantity::to_f64;
 use neap_engine::run::Realised;
@@ -205,8 +204,8 @@ fn drug(text: &mut String, checked: &Checked<'_>) {
         let _ = writeln!(text, "  between-subject variability is off: the random parts below do not act");
     }
     for parameter in &drug.parameters {
-        let name = role_name(parameter.role, drug.model);
-        let unit = role_unit(parameter.role);
+        let name = parameter.role.name(drug.model);
+        let unit = parameter.role.unit();
         let typical = with_unit(parameter.typical, unit);
         let _ = writeln!(text, "  {name}: typically {typical}{}", varies(parameter, unit));
         for effect in effects(parameter, name, unit, &scenario.population.covariates) {
@@ -217,7 +216,7 @@ fn drug(text: &mut String, checked: &Checked<'_>) {
         }
     }
     for &(one, other, value) in &drug.correlations {
-        let name = |index: usize| role_name(drug.parameters[index].role, drug.model);
+        let name = |index: usize| drug.parameters[index].role.name(drug.model);
         let value = significant(value, 4);
         let _ = writeln!(text, "  random parts of {} and {}: correlation {value}", name(one), name(other));
     }
@@ -364,8 +363,8 @@ pub(crate) fn json(checked: &Checked<'_>) -> String {
     let (drug, explanation, limits) = (&scenario.drug, checked.explanation, checked.plan.limits());
     let covariates = &scenario.population.covariates;
     let parameter = |parameter: &Parameter| {
-        let name = role_name(parameter.role, drug.model);
-        let unit = role_unit(parameter.role);
+        let name = parameter.role.name(drug.model);
+        let unit = parameter.role.unit();
         let random = match parameter.varies {
             Varies::Not => Value::Null,
             Varies::Lognormal { log_sd } => json!({ "form": "lognormal", "log_sd": log_sd, "cv": cv_of(log_sd) }),

@@ -10,6 +10,9 @@ use crate::scenario::Role;
 /// Distinct steps whose matrices are kept for a block; the others are computed where they are met.
 pub const KEPT_STEPS: usize = 16;
 
+/// Distinct times that an input runs whose results are kept for a block.
+pub const KEPT_RUNS: usize = 8;
+
 /// Output times that are computed at one go, so that amounts stay in registers from one to the next.
 pub const AT_A_TIME: usize = 8;
 
@@ -18,11 +21,8 @@ pub const AT_A_TIME: usize = 8;
 pub struct March {
     structure: Structure,
     rates: Rates,
-    /// Which kept matrix a span has.
-    slots: Vec<Option<usize>>,
-    kept: Vec<Step>,
-    /// Spans of the kept matrices.
-    kept_spans: Vec<usize>,
+    steps: Kept<Step>,
+    runs: Kept<Infused>,
     step: Step,
     fold: Step,
     infused: Infused,
@@ -33,6 +33,33 @@ pub struct March {
     lagged: bool,
     shortest_lag: f64,
     longest_lag: f64,
+}
+
+/// What is kept for the most used spans of a block; the others are computed where they are met.
+#[derive(Debug)]
+struct Kept<T> {
+    slots: Vec<Option<usize>>,
+    kept: Vec<T>,
+    /// Spans of the kept ones.
+    spans: Vec<usize>,
+}
+
+impl<T: Clone + Default> Kept<T> {
+    /// Of spans used more than once, the `most` most used; ties go to the earlier one.
+    fn new(uses: &[usize], most: usize) -> Self {
+        let mut spans: Vec<usize> = (0..uses.len()).filter(|&span| uses[span] > 1).collect();
+        spans.sort_by_key(|&span| std::cmp::Reverse(uses[span]));
+        spans.truncate(most);
+        let mut slots = vec![None; uses.len()];
+        for (slot, &span) in spans.iter().enumerate() {
+            slots[span] = Some(slot);
+        }
+        Self { slots, kept: vec![T::default(); spans.len()], spans }
+    }
+
+    fn get(&self, span: usize) -> Option<&T> {
+        self.slots[span].map(|slot| &self.kept[slot])
+    }
 }
 
 /// What one shape has left in the body: amounts per unit given each time and per litre of central volume, so that the central one
@@ -60,14 +87,8 @@ struct Entry {
 impl March {
     /// Prepares the work for a timetable.
     pub fn new(structure: Structure, timetable: &Timetable) -> Self {
-        // The most used spans are kept; ties go to the earlier one.
-        let mut order: Vec<usize> = (0..timetable.spans.len()).filter(|&span| timetable.uses[span] > 1).collect();
-        order.sort_by_key(|&span| std::cmp::Reverse(timetable.uses[span]));
-        order.truncate(KEPT_STEPS);
-        let mut slots = vec![None; timetable.spans.len()];
-        for (slot, &span) in order.iter().enumerate() {
-            slots[span] = Some(slot);
-        }
+        let steps = Kept::new(&timetable.uses, KEPT_STEPS);
+        let runs = Kept::new(&timetable.runs, KEPT_RUNS);
         let state = State {
             gut: Row::ZERO,
             central: Row::ZERO,
@@ -79,9 +100,8 @@ impl March {
         Self {
             structure,
             rates: Rates::default(),
-            slots,
-            kept: vec![Step::default(); order.len()],
-            kept_spans: order,
+            steps,
+            runs,
             step: Step::default(),
             fold: Step::default(),
             infused: Infused::default(),
@@ -108,8 +128,11 @@ impl March {
             self.shortest_lag = self.lag.iter().copied().fold(f64::INFINITY, f64::min);
             self.longest_lag = self.lag.iter().copied().fold(0.0, f64::max);
         }
-        for (matrix, &span) in self.kept.iter_mut().zip(&self.kept_spans) {
+        for (matrix, &span) in self.steps.kept.iter_mut().zip(&self.steps.spans) {
             matrix.fill(&self.structure, &self.rates, &Row::splat(timetable.spans[span]));
+        }
+        for (infused, &span) in self.runs.kept.iter_mut().zip(&self.runs.spans) {
+            infused.fill(&self.structure, &self.rates, timetable.spans[span]);
         }
         for state in &mut self.states {
             state.gut = Row::ZERO;
@@ -136,8 +159,8 @@ impl March {
                     {
                         end += 1;
                     }
-                    let matrix = if let Some(slot) = self.slots[span] {
-                        &self.kept[slot]
+                    let matrix = if let Some(kept) = self.steps.get(span) {
+                        kept
                     } else {
                         self.step.fill(&self.structure, &self.rates, &Row::splat(timetable.spans[span]));
                         &self.step
@@ -152,8 +175,8 @@ impl March {
                 let mut folding = Folding {
                     structure: &self.structure,
                     rates: &self.rates,
-                    slots: &self.slots,
-                    kept: &self.kept,
+                    steps: &self.steps,
+                    runs: &self.runs,
                     spans: &timetable.spans,
                     matrix: &mut self.fold,
                     infused: &mut self.infused,
@@ -183,8 +206,8 @@ impl March {
 struct Folding<'a> {
     structure: &'a Structure,
     rates: &'a Rates,
-    slots: &'a [Option<usize>],
-    kept: &'a [Step],
+    steps: &'a Kept<Step>,
+    runs: &'a Kept<Infused>,
     spans: &'a [f64],
     matrix: &'a mut Step,
     infused: &'a mut Infused,
@@ -194,8 +217,8 @@ struct Folding<'a> {
 impl Folding<'_> {
     /// The matrix of a span: kept, or computed now.
     fn of(&mut self, span: usize) -> &Step {
-        if let Some(slot) = self.slots[span] {
-            &self.kept[slot]
+        if let Some(kept) = self.steps.get(span) {
+            kept
         } else {
             self.matrix.fill(self.structure, self.rates, &Row::splat(self.spans[span]));
             self.matrix
@@ -226,7 +249,10 @@ impl Folding<'_> {
             Fold::Ran { ran, ago } => {
                 let mut rate = *entry;
                 scale(&mut rate, &Row::splat(1.0 / track.over.expect("an infusion has a length")));
-                self.infused.fill(self.structure, self.rates, self.spans[ran]);
+                match self.runs.get(ran) {
+                    Some(kept) => self.infused.clone_from(kept),
+                    None => self.infused.fill(self.structure, self.rates, self.spans[ran]),
+                }
                 scale(&mut self.infused.central, &rate);
                 scale(&mut self.infused.peripheral, &rate);
                 let Some(span) = ago else {

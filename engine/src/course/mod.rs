@@ -3,5 +3,5 @@
 mod march;
 mod timetable;
 
-pub use march::{AT_A_TIME, KEPT_STEPS, March};
+pub use march::{AT_A_TIME, KEPT_RUNS, KEPT_STEPS, March};
 pub use timetable::{Fold, Span, Timetable, Track};

@@ -64,8 +64,10 @@ pub struct Timetable {
     pub steps: Vec<Span>,
     /// The distinct lengths of time, in h.
     pub spans: Vec<f64>,
-    /// How often each is used as a step or for a dose.
+    /// How often each is used as a step or since a dose.
     pub uses: Vec<usize>,
+    /// How often each is used as the time that an input ran.
+    pub runs: Vec<usize>,
     /// One track a shape.
     pub tracks: Vec<Track>,
 }
@@ -73,16 +75,29 @@ pub struct Timetable {
 struct Spans {
     exact: std::collections::BTreeMap<Exact, Span>,
     uses: Vec<usize>,
+    runs: Vec<usize>,
 }
 
 impl Spans {
-    fn of(&mut self, length: &Exact) -> Span {
+    fn find(&mut self, length: &Exact) -> Span {
         let next = self.uses.len();
         let span = *self.exact.entry(length.clone()).or_insert(next);
         if span == next {
             self.uses.push(0);
+            self.runs.push(0);
         }
+        span
+    }
+
+    fn of(&mut self, length: &Exact) -> Span {
+        let span = self.find(length);
         self.uses[span] += 1;
+        span
+    }
+
+    fn ran(&mut self, length: &Exact) -> Span {
+        let span = self.find(length);
+        self.runs[span] += 1;
         span
     }
 
@@ -95,14 +110,21 @@ impl Timetable {
     /// Works out the schedule of some shapes at some output times; `lagged` says that oral doses have a lag of each
     /// patient's own.
     pub fn new(protocol: &Protocol, times: &[Exact], lagged: bool) -> Self {
-        let mut spans = Spans { exact: std::collections::BTreeMap::new(), uses: Vec::new() };
+        let mut spans = Spans { exact: std::collections::BTreeMap::new(), uses: Vec::new(), runs: Vec::new() };
         let steps = times.windows(2).map(|pair| spans.of(&(&pair[1] - &pair[0]))).collect();
         let tracks = protocol.shapes.iter().map(|shape| track(shape, times, lagged, &mut spans)).collect();
         let mut lengths = vec![0.0; spans.uses.len()];
         for (length, span) in &spans.exact {
             lengths[*span] = to_f64(length);
         }
-        Self { times: times.iter().map(to_f64).collect(), steps, spans: lengths, uses: spans.uses, tracks }
+        Self {
+            times: times.iter().map(to_f64).collect(),
+            steps,
+            spans: lengths,
+            uses: spans.uses,
+            runs: spans.runs,
+            tracks,
+        }
     }
 }
 
@@ -133,7 +155,7 @@ fn track(shape: &Shape, times: &[Exact], lagged: bool, spans: &mut Spans) -> Tra
                 let mut from = start.clone();
                 while index < times.len() && from < end {
                     let until = if times[index] < end { &times[index] } else { &end };
-                    let ran = spans.of(&(until - &from));
+                    let ran = spans.ran(&(until - &from));
                     folds[index].push(Fold::Ran { ran, ago: spans.ago(&(&times[index] - until)) });
                     from = until.clone();
                     index += 1;

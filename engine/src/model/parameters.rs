@@ -6,7 +6,6 @@
 use multiversion::multiversion;
 use nalgebra::DMatrix;
 
-use super::role_name;
 use crate::draw::Stream;
 use crate::math::{LANES, Row, exp, exp_row, ln, ln_row, normal_cdf, normal_quantile, normal_quantile_row};
 use crate::scenario::{Drug, Factor, Parameter, Role, Scenario, Varies};
@@ -46,7 +45,7 @@ impl Individuals {
             .iter()
             .map(|parameter| {
                 (parameter.varies != Varies::Not).then(|| {
-                    let path = format!("drug.parameter.{}", role_name(parameter.role, drug.model));
+                    let path = format!("drug.parameter.{}", parameter.role.name(drug.model));
                     Stream::new(scenario.population.seed, cohort, &path)
                 })
             })
@@ -113,6 +112,23 @@ impl Individuals {
         }
     }
 
+    /// The first of the first `count` lanes with a parameter that no body can have: below zero, a volume of zero, or not a finite
+    /// number; and which parameter it is.
+    pub fn impossible(&self, rows: &[Row], count: usize) -> Option<Impossible> {
+        let mut first: Option<Impossible> = None;
+        for (parameter, row) in self.parameters.iter().zip(rows) {
+            let least = if parameter.role.is_volume() { f64::MIN_POSITIVE } else { 0.0 };
+            if within(row, least) {
+                continue;
+            }
+            let lanes = &row[..count.min(first.map_or(LANES, |found| found.lane))];
+            if let Some(lane) = lanes.iter().position(|value| !(least..=f64::MAX).contains(value)) {
+                first = Some(Impossible { lane, role: parameter.role, value: row[lane] });
+            }
+        }
+        first
+    }
+
     fn one(&self, index: usize, covariates: &[Row], logs: &[Row], random: &Row, row: &mut Row) {
         let parameter = &self.parameters[index];
         let mut base = Row::splat(parameter.typical);
@@ -163,6 +179,27 @@ impl Individuals {
             }
         }
     }
+}
+
+/// A value that no body can have.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub struct Impossible {
+    /// The patient's lane.
+    pub lane: usize,
+    /// The parameter.
+    pub role: Role,
+    /// Its value.
+    pub value: f64,
+}
+
+/// Whether all lanes are finite and at least `least`.
+#[multiversion(targets("x86_64+avx512f+avx512bw+avx512dq+avx512vl", "x86_64+avx2"))]
+fn within(row: &Row, least: f64) -> bool {
+    let mut outside = 0u64;
+    for value in &row.0 {
+        outside |= u64::from(!(*value >= least)) | u64::from(!(*value <= f64::MAX));
+    }
+    outside == 0
 }
 
 /// One value of a parameter whose random part needs more than an exponential, limits by inversion.

@@ -1,6 +1,7 @@
 //! How much is kept, and how many passes a memory budget makes of it.
 
 use super::Plan;
+use crate::course::{AT_A_TIME, KEPT_RUNS, KEPT_STEPS};
 use crate::math::{LANES, Row};
 
 /// Up to so many patients every value is kept: a pilot would not pay.
@@ -8,6 +9,9 @@ pub const DIRECT: u64 = 8192;
 
 /// One patient in so many belongs to the pilot: a larger pilot costs its own pass, a smaller one keeps more values in the run.
 const PILOT_PART: u64 = 24;
+
+/// No pilot is larger: its histograms count in 32 bits.
+const LARGEST_PILOT: u64 = 1 << 26;
 
 /// Growing a list moves it: while it does, old and new stand side by side, a quarter apart.
 const GROWTH: f64 = 1.3;
@@ -17,7 +21,7 @@ const SERIES_BYTES: u64 = 8 * (LANES as u64 + 64) + 256;
 
 /// Patients in the pilot of a run; `None` where all values are kept.
 pub fn pilot_size(patients: u64) -> Option<u64> {
-    (patients > DIRECT).then(|| (patients / PILOT_PART).next_multiple_of(LANES as u64).max(1024))
+    (patients > DIRECT).then(|| (patients / PILOT_PART).clamp(1024, LARGEST_PILOT).next_multiple_of(LANES as u64))
 }
 
 /// Cuts series into tiles that fit the budget, in order: `shares[i]` is the part of `patients` values expected to be kept of
@@ -43,8 +47,7 @@ impl Plan {
     /// Bytes of the blocks in work, all threads together.
     pub fn block_bytes(&self) -> u64 {
         let rows = self.cohort.len() + 2 * self.individuals.len() + self.individuals.scratch();
-        let march =
-            8 + 7 * (2 + crate::course::KEPT_STEPS) + (4 + crate::course::AT_A_TIME) * self.protocol.shapes.len() + 8;
+        let march = 8 + 7 * (2 + KEPT_STEPS) + 2 * (1 + KEPT_RUNS) + (4 + AT_A_TIME) * self.protocol.shapes.len() + 8;
         (self.limits().threads * (rows + march) * size_of::<Row>()) as u64
     }
 

@@ -7,6 +7,7 @@ use super::Watch;
 use super::worker::{Clock, Sink, Worker};
 use crate::diagnostic::Fault;
 use crate::math::{LANES, Row};
+use crate::model::Impossible;
 use crate::plan::Plan;
 use crate::summary::{Partial, Search};
 
@@ -27,6 +28,7 @@ pub(super) fn pass<S: Sink + Send>(
     let blocks = patients.div_ceil(LANES as u64);
     let next = AtomicU64::new(0);
     let clocks = Mutex::new(Clock::default());
+    let impossible = Mutex::new(None);
     let sinks = rayon::broadcast(|_| {
         let mut worker = Worker::new(plan);
         let mut sink = prepare();
@@ -39,7 +41,15 @@ pub(super) fn pass<S: Sink + Send>(
             let first = block * LANES as u64;
             let lanes = (patients - first).min(LANES as u64) as usize;
             count(&mut sink, lanes);
-            worker.block(&mut sink, first, until, block.is_multiple_of(TIMED).then_some(&mut mine));
+            let timed = block.is_multiple_of(TIMED).then_some(&mut mine);
+            if let Some(found) = worker.block(&mut sink, first, lanes, until, timed) {
+                let patient = first + found.lane as u64 + 1;
+                let mut least = impossible.lock().expect("no thread panics while it compares");
+                if least.is_none_or(|(known, _)| patient < known) {
+                    *least = Some((patient, found));
+                }
+            }
+
             watch.advance(lanes as u64);
         }
         let mut all = clocks.lock().expect("no thread panics while it adds up seconds");
@@ -51,6 +61,9 @@ pub(super) fn pass<S: Sink + Send>(
     if watch.stopped() {
         return Err(Fault::Interrupted);
     }
+    if let Some((patient, found)) = impossible.into_inner().expect("no thread panicked") {
+        return Err(impossible_parameter(plan, patient, found));
+    }
     // The timed blocks stand for all.
     let scale = blocks as f64 / blocks.div_ceil(TIMED) as f64;
     let timed = clocks.into_inner().expect("no thread panicked");
@@ -58,6 +71,18 @@ pub(super) fn pass<S: Sink + Send>(
     clock.solving += timed.solving * scale;
     clock.counting += timed.counting * scale;
     Ok(sinks)
+}
+
+/// The same patient whatever the threads: the first one.
+fn impossible_parameter(plan: &Plan, patient: u64, found: Impossible) -> Fault {
+    let (name, unit) = (found.role.name(plan.scenario().drug.model), found.role.unit());
+    let value = found.value;
+    Fault::Refused {
+        message: format!("patient {patient} would have a `{name}` of {value} {unit}, which no body can have"),
+        help:
+            "narrow the limits of the covariates behind it, or let it depend on them by a power, which stays above zero"
+                .to_owned(),
+    }
 }
 
 /// What a pass looks at.

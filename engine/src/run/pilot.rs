@@ -21,7 +21,7 @@ pub(super) fn searches(
     watch: &Watch,
 ) -> Result<(Vec<Search>, Vec<Search>), Fault> {
     let mut sample = Sample::new(plan);
-    Worker::new(plan).block(&mut sample, 0, plan.timetable.times.len(), None);
+    Worker::new(plan).block(&mut sample, 0, LANES, plan.timetable.times.len(), None);
     for values in &mut sample.signals {
         values.sort_unstable_by(f64::total_cmp);
     }

@@ -5,7 +5,6 @@ use super::worker::Worker;
 use super::{POPULATION_PERCENTILES, Realised, band_value};
 use crate::cohort::{ASKED_PERCENTILES, Asked};
 use crate::math::LANES;
-use crate::model::{role_name, role_unit};
 use crate::plan::Plan;
 use crate::scenario::Spread;
 use crate::summary::{Moments, Ranks};
@@ -84,7 +83,7 @@ fn rows(plan: &Plan, patients: u64, ranks: &[Ranks], found: &[Series], moments: 
             }
             None => {
                 let role = scenario.drug.parameters[index - covariates.len()].role;
-                (role_name(role, scenario.drug.model), role_unit(role), None)
+                (role.name(scenario.drug.model), role.unit(), None)
             }
         };
         let (mean, sd) = moments[index].mean_and_sd(centres[index], patients);

@@ -4,6 +4,7 @@ use std::time::Instant;
 
 use crate::course::{AT_A_TIME, March};
 use crate::math::{LANES, Row};
+use crate::model::Impossible;
 use crate::plan::Plan;
 use crate::scenario::Amount;
 
@@ -42,11 +43,23 @@ impl<'a> Worker<'a> {
         self.plan.individuals.fill(first, &self.covariates, &mut self.parameters, &mut self.scratch);
     }
 
-    /// Draws and solves the block whose first patient is `first`, and hands it to `sink`.
-    pub(super) fn block(&mut self, sink: &mut impl Sink, first: u64, until: usize, clock: Option<&mut Clock>) {
-        // Asking the clock at every output time is dear, so only some blocks are timed.
+    /// Draws and solves the block whose first patient is `first`, and hands it to `sink`. Where one of the first `count` patients
+    /// has a parameter that no body can have, that is told instead of solving the block.
+    pub(super) fn block(
+        &mut self,
+        sink: &mut impl Sink,
+        first: u64,
+        count: usize,
+        until: usize,
+        clock: Option<&mut Clock>,
+    ) -> Option<Impossible> {
+        // Asking the clock at every go is dear, so only some blocks are timed.
         let mut clock = Stopwatch::new(clock);
         self.draw(first);
+        let impossible = self.plan.individuals.impossible(&self.parameters, count);
+        if impossible.is_some() {
+            return impossible;
+        }
         clock.lap(|clock| &mut clock.sampling);
         sink.population(&self.covariates, &self.parameters);
         clock.lap(|clock| &mut clock.counting);
@@ -73,6 +86,7 @@ impl<'a> Worker<'a> {
             }
             clock.lap(|clock| &mut clock.counting);
         }
+        None
     }
 }
 

@@ -57,15 +57,20 @@ impl Role {
         KINDS.iter().find(|kind| kind.role == self).map_or("", |kind| kind.name)
     }
 
-    /// The unit of its values inside; empty for a fraction.
+    /// The unit of its values inside.
     pub fn unit(self) -> &'static str {
         match self {
             Self::Clearance | Self::IntercompartmentalClearance => "L/h",
             Self::CentralVolume | Self::PeripheralVolume => "L",
-            Self::AbsorptionRate => "1/h",
+            Self::AbsorptionRate => "/h",
             Self::LagTime => "h",
-            Self::Bioavailability => "",
+            Self::Bioavailability => "1",
         }
+    }
+
+    /// Whether it is a volume.
+    pub fn is_volume(self) -> bool {
+        matches!(self, Self::CentralVolume | Self::PeripheralVolume)
     }
 
     /// Whether only oral doses use it.

@@ -137,3 +137,74 @@ fn add(mine: &mut [u64], theirs: &[u64]) {
         *mine += theirs;
     }
 }
+
+#[cfg(test)]
+mod tests {
+    use proptest::prelude::*;
+
+    use super::*;
+    use crate::math::LANES;
+    use crate::summary::{Place, WindowEdges};
+
+    fn searches() -> Vec<Option<Search>> {
+        let window = Some(WindowEdges::new(Some(2.0), Some(8.0)));
+        vec![
+            Some(Search::new(&[Place::Between(1.0, 3.0), Place::Between(5.0, f64::INFINITY)], window, false, 0.5)),
+            None,
+            Some(Search::new(&[Place::Between(-1.0, 4.0), Place::At(4.0)], None, true, 0.5)),
+        ]
+    }
+
+    fn absorbed(blocks: &[(u64, usize)]) -> Partial {
+        let searches = searches();
+        let mut partial = Partial::new(&searches, 1, 0);
+        for &(seed, count) in blocks {
+            let mut state = seed;
+            let mut row = Row::ZERO;
+            for lane in row.iter_mut() {
+                state = state.wrapping_mul(6_364_136_223_846_793_005).wrapping_add(1_442_695_040_888_963_407);
+                *lane = (state >> 40) as f64 / f64::from(1 << 20);
+            }
+            for (series, search) in searches.iter().enumerate() {
+                if let Some(search) = search {
+                    partial.absorb(series, search, &row, 1.0, count);
+                }
+            }
+            partial.moments[0].absorb(&row, 8.0, count);
+            partial.patients += count as u64;
+        }
+        partial
+    }
+
+    /// Kept values in rising order: the order they came in is not part of what a partial means.
+    fn sorted(mut partial: Partial) -> Partial {
+        for kept in &mut partial.kept {
+            kept.values.sort_by(f64::total_cmp);
+        }
+        partial
+    }
+
+    proptest! {
+        #[test]
+        fn any_split_in_any_order_merges_to_the_same(
+            blocks in prop::collection::vec((any::<u64>(), 0..=LANES), 0..12),
+            cut in 0usize..12,
+        ) {
+            let (one, other) = blocks.split_at(cut.min(blocks.len()));
+            let whole = sorted(absorbed(&blocks));
+            for (first, second) in [(one, other), (other, one)] {
+                let mut merged = absorbed(first);
+                merged.merge(&absorbed(second));
+                prop_assert_eq!(&sorted(merged), &whole);
+            }
+        }
+
+        #[test]
+        fn stored_and_read_back_it_is_the_same(blocks in prop::collection::vec((any::<u64>(), 0..=LANES), 0..4)) {
+            let partial = absorbed(&blocks);
+            let words = partial.to_words();
+            prop_assert_eq!(Partial::from_words(&words), Some(partial));
+            prop_assert_eq!(Partial::from_words(&words[..words.len() - 1]), None);
+        }
+    }
+}

@@ -7,7 +7,6 @@ use arrow::datatypes::{Field, Schema, SchemaRef};
 
 use super::schema::{Kind, PATIENTS, field};
 use crate::diagnostic::Fault;
-use crate::model::{role_name, role_unit};
 use crate::run::PatientBlock;
 use crate::scenario::{Scenario, Spread};
 
@@ -24,8 +23,8 @@ pub fn patients_schema(scenario: &Scenario) -> SchemaRef {
         });
     }
     for parameter in &scenario.drug.parameters {
-        let name = role_name(parameter.role, scenario.drug.model);
-        let unit = role_unit(parameter.role);
+        let name = parameter.role.name(scenario.drug.model);
+        let unit = parameter.role.unit();
         fields.push(field(name, Kind::Number, false, unit, "The patient's own value of the parameter"));
     }
     Arc::new(Schema::new(fields))
