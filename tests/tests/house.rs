@@ -129,6 +129,33 @@ fn the_top_level_holds_only_what_the_house_has() {
     }
 }
 
+/// The pages that people read name what there is.
+#[test]
+fn the_pages_name_every_module_table_and_column() {
+    let developers = read(&top_level().join("DEVELOPERS.md"));
+    for module in HOUSE.iter().flat_map(|row| row.iter()) {
+        assert!(developers.contains(&format!("\n| `{module}` |")), "DEVELOPERS.md says nothing of {module}");
+    }
+    let readme = read(&top_level().join("README.md"));
+    for table in neap_engine::tables::TABLES {
+        let start = format!("| `{}` |", table.file);
+        let line = readme.lines().find(|line| line.starts_with(&start));
+        let line = line.unwrap_or_else(|| panic!("README.md says nothing of {}", table.file));
+        for column in table.columns {
+            // Errors and bounds of shares are described together.
+            let stem = ["_se", "_mc_lower", "_mc_upper"].iter().find_map(|end| column.name.strip_suffix(end));
+            let name = stem.filter(|_| table.file == "shares.parquet").unwrap_or(column.name);
+            assert!(line.contains(name), "README.md: {} has a column {}", table.file, column.name);
+        }
+    }
+    for command in ["cargo run --release -- run scenarios/first-arm.toml", "cargo test --workspace --release"] {
+        assert!(readme.contains(command));
+    }
+    for caution in neap_engine::tables::CAUTIONS {
+        assert!(readme.replace('`', "").contains(caution), "README.md lacks: {caution}");
+    }
+}
+
 /// The checks above can fail: each of these trespasses is found.
 #[test]
 fn a_trespass_is_found() {
