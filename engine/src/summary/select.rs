@@ -3,13 +3,16 @@
 //! In the manner of Floyd and Rivest 1975 (Commun ACM 18:165-172; from memory): a small sample says between which two values the
 //! wanted ranks must lie, one pass picks those out, and only they are ordered.
 
-use crate::math::narrow;
+use crate::math::{Kept, Sieve, exp, ln, narrow};
 
-/// Lists shorter than this are ordered as they are.
-const SMALL: usize = 1024;
+/// Shorter lists are ordered as they are.
+const SMALL: usize = 4096;
 
 /// Standard errors of the sample by which the picked part is widened.
 const WIDTHS: f64 = 3.5;
+
+/// Sampled values of fewer than so many say nothing.
+const LEAST_SAMPLE: usize = 32;
 
 /// Buffers to be used again.
 #[derive(Debug, Default)]
@@ -19,81 +22,119 @@ pub struct Scratch {
     keys: Vec<u64>,
 }
 
-/// The values from `low` up to but not including `high`: `inside` of them, and `from` at or above `low`.
-#[derive(Clone, Copy, Debug)]
+/// The values from `low` up to but not including `high`.
+#[derive(Clone, Debug)]
 pub(super) struct Bracket {
     pub(super) low: f64,
     pub(super) high: f64,
+    /// How many of them there are.
     pub(super) inside: usize,
+    /// How many values are at or above `low`.
     pub(super) from: usize,
+    /// Ranks wanted within the bracket, rising, from 0.
+    pub(super) ranks: Vec<usize>,
 }
 
-/// Hands the value of each of `ranks` (rising, counted from 0 within the bracket) to `found`.
+/// Hands the value of each wanted rank to `found`, with the bracket's index and the rank's place. Outside the brackets, which `sieve`
+/// has, `lists` hold nothing.
 pub(super) fn select(
     lists: &[&[f64]],
-    bracket: Bracket,
-    ranks: &[usize],
+    sieve: &Sieve,
+    brackets: &[Bracket],
     scratch: &mut Scratch,
-    found: &mut impl FnMut(usize, f64),
+    found: &mut impl FnMut(usize, usize, f64),
 ) {
-    let (Some(&first), Some(&last)) = (ranks.first(), ranks.last()) else { return };
-    let picked = part(lists, bracket, first, last, scratch)
-        .filter(|&(skipped, count)| skipped <= first && last < skipped + count);
-    let skipped = picked.map_or_else(
-        || {
-            scratch.picked.clear();
-            for values in lists {
-                narrow(values, bracket.low, bracket.high, &mut scratch.picked);
+    let total: usize = lists.iter().map(|values| values.len()).sum();
+    let parts = if total < SMALL { None } else { Parts::new(lists, total, sieve, brackets, scratch) };
+    for (index, bracket) in brackets.iter().enumerate() {
+        if bracket.ranks.is_empty() {
+            continue;
+        }
+        scratch.picked.clear();
+        let skipped = match &parts {
+            Some(parts) if parts.hold(index, bracket) => {
+                let (low, high) = parts.sieve.brackets()[index];
+                for values in parts.kept.lists() {
+                    narrow(values, low, high, &mut scratch.picked);
+                }
+                parts.skipped(index, bracket)
             }
-            0
-        },
-        |(skipped, _)| skipped,
-    );
-    scratch.keys.clear();
-    scratch.keys.extend(scratch.picked.iter().map(|&value| order_key(value)));
-    let ranks: Vec<usize> = ranks.iter().map(|rank| rank - skipped).collect();
-    select_from(&mut scratch.keys, 0, &ranks, 0, &mut |place, key| found(place, from_order_key(key)));
+            _ => {
+                for values in lists {
+                    narrow(values, bracket.low, bracket.high, &mut scratch.picked);
+                }
+                0
+            }
+        };
+        scratch.keys.clear();
+        scratch.keys.extend(scratch.picked.iter().map(|&value| order_key(value)));
+        let ranks: Vec<usize> = bracket.ranks.iter().map(|rank| rank - skipped).collect();
+        let mut hand_over = |place, key| found(index, place, from_order_key(key));
+        select_from(&mut scratch.keys, 0, &ranks, 0, &mut hand_over);
+    }
 }
 
-/// Picks the part of a bracket where the ranks from `first` to `last` are expected; returns how many of the bracket's values lie
-/// below that part and how many in it. `None` where the bracket is small enough as it is.
-fn part(
-    lists: &[&[f64]],
-    bracket: Bracket,
-    first: usize,
-    last: usize,
-    scratch: &mut Scratch,
-) -> Option<(usize, usize)> {
-    if bracket.inside < SMALL {
-        return None;
+/// The part of each bracket where its wanted ranks are expected, and the values there.
+struct Parts {
+    sieve: Sieve,
+    kept: Kept,
+}
+
+impl Parts {
+    /// Picks them; `None` where the sample is too small to say where.
+    fn new(lists: &[&[f64]], total: usize, sieve: &Sieve, brackets: &[Bracket], scratch: &mut Scratch) -> Option<Self> {
+        // The values stand in the order of the patients, who are alike: the first ones are a sample.
+        let mut left = (1.5 * exp(ln(total as f64) * (2.0 / 3.0))) as usize;
+        scratch.sample.clear();
+        for values in lists {
+            let taken = left.min(values.len());
+            scratch.sample.extend_from_slice(&values[..taken]);
+            left -= taken;
+        }
+        scratch.sample.sort_unstable_by(f64::total_cmp);
+        let parts: Option<Vec<(f64, f64)>> = brackets.iter().map(|bracket| bracket.part(&scratch.sample)).collect();
+        let sieve = sieve.with_brackets(&parts?);
+        let mut kept = sieve.nothing(total);
+        for values in lists {
+            sieve.sift_list(values, &mut kept);
+        }
+        Some(Self { sieve, kept })
     }
-    // The values stand in the order of the patients, who are alike: the first ones are a sample.
-    let total: usize = lists.iter().map(|values| values.len()).sum();
-    let size = bracket.inside as f64;
-    let wanted = crate::math::exp(crate::math::ln(size) * (2.0 / 3.0));
-    let length = (wanted * total as f64 / size) as usize;
-    scratch.sample.clear();
-    let mut left = length;
-    for values in lists {
-        let taken = left.min(values.len());
-        narrow(&values[..taken], bracket.low, bracket.high, &mut scratch.sample);
-        left -= taken;
+
+    /// How many of a bracket's values lie below its part.
+    fn skipped(&self, index: usize, bracket: &Bracket) -> usize {
+        bracket.from - self.kept.from_bracket[index] as usize
     }
-    scratch.sample.sort_unstable_by(f64::total_cmp);
-    let sampled = scratch.sample.len() as f64;
-    if sampled < 32.0 {
-        return None;
+
+    /// Whether a bracket's part holds all wanted ranks.
+    fn hold(&self, index: usize, bracket: &Bracket) -> bool {
+        let skipped = self.skipped(index, bracket);
+        let held = self.kept.in_bracket[index] as usize;
+        bracket.ranks.iter().all(|rank| (skipped..skipped + held).contains(rank))
     }
-    let place = |rank: usize, side: f64| {
-        let p = (rank as f64 + 0.5) / size;
-        p * sampled + side * (WIDTHS * (sampled * p * (1.0 - p)).sqrt() + 1.0)
-    };
-    let (from, to) = (place(first, -1.0), place(last, 1.0));
-    let low = if from < 0.0 { bracket.low } else { scratch.sample[from as usize] };
-    let high = scratch.sample.get(to as usize).copied().unwrap_or(bracket.high);
-    scratch.picked.clear();
-    let at_or_above: usize = lists.iter().map(|values| narrow(values, low, high, &mut scratch.picked)).sum();
-    Some((bracket.from - at_or_above, scratch.picked.len()))
+}
+
+impl Bracket {
+    /// Where the wanted ranks are expected, by a sorted sample of the values of all brackets.
+    fn part(&self, sample: &[f64]) -> Option<(f64, f64)> {
+        let (Some(&first), Some(&last)) = (self.ranks.first(), self.ranks.last()) else {
+            return Some((self.low, self.low));
+        };
+        let start = sample.partition_point(|&value| value < self.low);
+        let end = start + sample[start..].partition_point(|&value| value < self.high || self.high == f64::INFINITY);
+        let sample = &sample[start..end];
+        if sample.len() < LEAST_SAMPLE {
+            return None;
+        }
+        let sampled = sample.len() as f64;
+        let place = |rank: usize, side: f64| {
+            let p = (rank as f64 + 0.5) / self.inside as f64;
+            p * sampled + side * (WIDTHS * (sampled * p * (1.0 - p)).sqrt() + 1.0)
+        };
+        let (from, to) = (place(first, -1.0), place(last, 1.0));
+        let low = if from < 0.0 { self.low } else { sample[from as usize] };
+        Some((low, sample.get(to as usize).copied().unwrap_or(self.high)))
+    }
 }
 
 /// Maps a value to an integer that orders as the value does (negative zero below zero).
@@ -146,22 +187,35 @@ mod tests {
 
     #[test]
     fn selects_what_sorting_would() {
-        for count in [1, 10, 1000, 5000, 40_000] {
-            let all = values(count);
-            let (one, other) = all.split_at(count / 3);
-            let (low, high) = (1e6, 1.5e7);
-            let mut sorted: Vec<f64> = all.iter().copied().filter(|&v| v >= low && v < high).collect();
-            sorted.sort_by(f64::total_cmp);
-            let from = all.iter().filter(|&&v| v >= low).count();
-            let bracket = Bracket { low, high, inside: sorted.len(), from };
-            for start in [0, sorted.len() / 4, sorted.len() / 2, sorted.len().saturating_sub(1)] {
-                let ranks: Vec<usize> =
-                    [0, 0, 1, 5, 5, 40].iter().map(|r| start + r).filter(|&r| r < sorted.len()).collect();
-                let mut found = vec![f64::NAN; ranks.len()];
-                select(&[one, other], bracket, &ranks, &mut Scratch::default(), &mut |place, value| {
-                    found[place] = value
-                });
-                assert_eq!(found, ranks.iter().map(|&r| sorted[r]).collect::<Vec<_>>(), "{count} values from {start}");
+        for count in [1, 10, 1000, 5000, 40_000, 300_000] {
+            for sieve in [
+                Sieve::wide(&[(1e6, 1.2e7), (1.4e7, 1.6e7)], &[]),
+                Sieve::exact(&[(1e6, 1.2e7), (1.4e7, f64::INFINITY)], &[]),
+            ] {
+                let all: Vec<f64> = values(count)
+                    .into_iter()
+                    .filter(|&v| sieve.brackets().iter().any(|b| b.0 <= v && v < b.1))
+                    .collect();
+                let (one, other) = all.split_at(all.len() / 3);
+                let mut expected = Vec::new();
+                let brackets: Vec<Bracket> = sieve
+                    .brackets()
+                    .iter()
+                    .map(|&(low, high)| {
+                        let mut inside: Vec<f64> = all.iter().copied().filter(|&v| v >= low && v < high).collect();
+                        inside.sort_by(f64::total_cmp);
+                        let middle = inside.len() / 2;
+                        let ranks: Vec<usize> =
+                            [0, 0, 1, 5, 5, 40].iter().map(|r| middle + r).filter(|&r| r < inside.len()).collect();
+                        expected.push(ranks.iter().map(|&r| inside[r]).collect::<Vec<f64>>());
+                        let from = all.iter().filter(|&&v| v >= low).count();
+                        Bracket { low, high, inside: inside.len(), from, ranks }
+                    })
+                    .collect();
+                let mut found: Vec<Vec<f64>> = expected.iter().map(|e| vec![f64::NAN; e.len()]).collect();
+                let mut take = |bracket: usize, place: usize, value| found[bracket][place] = value;
+                select(&[one, other], &sieve, &brackets, &mut Scratch::default(), &mut take);
+                assert_eq!(found, expected, "{count} values");
             }
         }
     }

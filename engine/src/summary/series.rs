@@ -101,20 +101,25 @@ impl Search {
         let lists: Vec<&[f64]> = kept.iter().flat_map(|kept| kept.lists()).collect();
         let brackets = self.sieve.brackets();
         let held = |index: usize| kept.iter().map(|kept| kept.in_bracket[index]).sum::<u64>();
+        let mut places = Vec::with_capacity(brackets.len());
+        let mut searched = Vec::with_capacity(brackets.len());
         for (index, &(low, high)) in brackets.iter().enumerate() {
             let below = patients - kept.iter().map(|kept| kept.from_bracket[index]).sum::<u64>();
             let inside = held(index);
             let above = below + inside;
             let start = ranks.partition_point(|&rank| rank < below);
             let end = ranks.partition_point(|&rank| rank < above);
-            let wanted: Vec<usize> = ranks[start..end].iter().map(|&rank| (rank - below) as usize).collect();
             // Values are kept within brackets only, which rise.
             let from = (index..brackets.len()).map(held).sum::<u64>();
-            let bracket = Bracket { low, high, inside: inside as usize, from: from as usize };
-            select(&lists, bracket, &wanted, scratch, &mut |place, value| found[start + place] = Found::Value(value));
+            let wanted = ranks[start..end].iter().map(|&rank| (rank - below) as usize).collect();
+            searched.push(Bracket { low, high, inside: inside as usize, from: from as usize, ranks: wanted });
+            places.push(start);
             known.push((low, below));
             known.push((high, above));
         }
+        select(&lists, &self.sieve, &searched, scratch, &mut |bracket, place, value| {
+            found[places[bracket] + place] = Found::Value(value);
+        });
         let offset = if self.window { 2 } else { 0 };
         for (index, &value) in self.points.iter().enumerate() {
             let from = |edge: usize| kept.iter().map(|kept| kept.from_edge[edge]).sum::<u64>();

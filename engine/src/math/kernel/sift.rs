@@ -13,6 +13,28 @@ pub struct Sieve {
     /// The upper halves of the brackets' ends, where they decide; else values are compared whole.
     keys: Option<Vec<(u32, u32)>>,
     edges: Vec<f64>,
+    /// The upper half of each edge, for values of `+0` and above.
+    edge_keys: Vec<EdgeKey>,
+}
+
+/// The upper half that values at or above an edge reach.
+#[derive(Clone, Copy, Debug, PartialEq)]
+struct EdgeKey {
+    /// Values whose upper half is at least this are at or above the edge.
+    from: u32,
+    /// Values with this upper half may be on either side: whole values decide.
+    doubtful: Option<u32>,
+}
+
+impl EdgeKey {
+    fn new(edge: f64) -> Self {
+        if edge.is_sign_negative() {
+            return Self { from: 0, doubtful: None };
+        }
+        let whole = edge.to_bits() << 32 == 0;
+        let key = upper(edge);
+        Self { from: key + u32::from(!whole), doubtful: (!whole).then_some(key) }
+    }
 }
 
 /// What a sieve has counted and kept of one series.
@@ -107,12 +129,33 @@ impl Sieve {
             .collect();
         let end = |key: u32| if key == ABOVE_ALL { f64::INFINITY } else { f64::from_bits(u64::from(key) << 32) };
         let brackets = keys.iter().map(|&(low, high)| (end(low), end(high))).collect();
-        Self { brackets, keys: Some(keys), edges: edges.to_vec() }
+        Self {
+            brackets,
+            keys: Some(keys),
+            edges: edges.to_vec(),
+            edge_keys: edges.iter().copied().map(EdgeKey::new).collect(),
+        }
     }
 
     /// A sieve whose brackets act exactly as given, for values of any sign.
     pub fn exact(brackets: &[(f64, f64)], edges: &[f64]) -> Self {
-        Self { brackets: brackets.to_vec(), keys: None, edges: edges.to_vec() }
+        Self { brackets: brackets.to_vec(), keys: None, edges: edges.to_vec(), edge_keys: Vec::new() }
+    }
+
+    /// A sieve of the same kind with other brackets and no edges.
+    pub fn with_brackets(&self, brackets: &[(f64, f64)]) -> Self {
+        if self.keys.is_some() { Self::wide(brackets, &[]) } else { Self::exact(brackets, &[]) }
+    }
+
+    /// Sifts a list of any length.
+    pub fn sift_list(&self, values: &[f64], kept: &mut Kept) {
+        let (rows, rest) = values.as_chunks::<LANES>();
+        for row in rows {
+            self.sift(row, 1.0, LANES, kept);
+        }
+        let mut last = Row::ZERO;
+        last[..rest.len()].copy_from_slice(rest);
+        self.sift(&last, 1.0, rest.len(), kept);
     }
 
     /// The brackets as they act: from the first, up to but not including the second, or to infinity and with it.
@@ -135,7 +178,7 @@ impl Sieve {
     }
 
     /// Sifts the first `count` lanes of `row`, each times `scale`.
-    pub fn sift(&self, row: &Row, scale: f64, count: usize, kept: &mut Kept) {
+    pub fn sift(&self, row: &[f64; LANES], scale: f64, count: usize, kept: &mut Kept) {
         if !self.brackets.is_empty() && kept.values.capacity() - kept.values.len() < ROOM {
             let next = Vec::with_capacity(kept.chunk.max(ROOM));
             kept.full.push(std::mem::replace(&mut kept.values, next));
@@ -153,8 +196,8 @@ impl Sieve {
     }
 
     /// The plain twin of the kernel.
-    pub fn sift_plain(&self, row: &Row, scale: f64, count: usize, kept: &mut Kept) {
-        let mut values = *row;
+    pub fn sift_plain(&self, row: &[f64; LANES], scale: f64, count: usize, kept: &mut Kept) {
+        let mut values = Row(*row);
         plain::scale(&mut values, scale);
         let mut within = [0u32; LANES];
         let totals = kept.from_bracket.iter_mut().zip(&mut kept.in_bracket);
@@ -262,17 +305,14 @@ mod plain {
 )]
 mod avx512 {
     use std::arch::x86_64::{
-        __m512d, _CMP_GE_OQ, _CMP_NGE_UQ, _MM_HINT_ET0, _mm_prefetch, _mm512_castpd_si512, _mm512_cmp_pd_mask,
-        _mm512_cmpeq_epu32_mask, _mm512_cmpge_epu32_mask, _mm512_load_pd, _mm512_mask_cmp_pd_mask,
+        __m512d, __m512i, _CMP_GE_OQ, _CMP_NGE_UQ, _MM_HINT_ET0, _mm_prefetch, _mm512_castpd_si512, _mm512_cmp_pd_mask,
+        _mm512_cmpeq_epu32_mask, _mm512_cmpge_epu32_mask, _mm512_loadu_pd, _mm512_mask_cmp_pd_mask,
         _mm512_mask_cmplt_epu32_mask, _mm512_maskz_compress_pd, _mm512_mul_pd, _mm512_permutex2var_epi32,
         _mm512_set1_epi32, _mm512_set1_pd, _mm512_setr_epi32, _mm512_storeu_pd,
     };
 
-    use super::{Kept, ROOM, Sieve, upper};
-    use crate::math::{LANES, Row};
-
-    /// Brackets, or edges, that one turn over a row looks at: as many as keep their counts in registers.
-    const TURN: usize = 8;
+    use super::{EdgeKey, Kept, ROOM, Sieve};
+    use crate::math::LANES;
 
     /// Lines that a block's kept values usually fill.
     const LINES: usize = 4;
@@ -293,54 +333,97 @@ mod avx512 {
     /// # Safety
     /// The processor must have AVX-512F and POPCNT; `kept.values` must have room for [`ROOM`] more if there are brackets.
     #[target_feature(enable = "avx512f,popcnt")]
-    pub(super) unsafe fn sift(sieve: &Sieve, row: &Row, scale: f64, kept: &mut Kept) {
-        edges(sieve, row, scale, &mut kept.from_edge);
-        match &sieve.keys {
-            // SAFETY: as above.
-            Some(keys) => unsafe {
-                match keys.as_slice() {
-                    [] => (),
-                    [a] => by_key([*a], row, scale, kept),
-                    [a, b] => by_key([*a, *b], row, scale, kept),
-                    [a, b, c] => by_key([*a, *b, *c], row, scale, kept),
-                    [a, b, c, d] => by_key([*a, *b, *c, *d], row, scale, kept),
-                    [a, b, c, d, e] => by_key([*a, *b, *c, *d, *e], row, scale, kept),
-                    [a, b, c, d, e, f] => by_key([*a, *b, *c, *d, *e, *f], row, scale, kept),
-                    [a, b, c, d, e, f, g] => by_key([*a, *b, *c, *d, *e, *f, *g], row, scale, kept),
-                    [a, b, c, d, e, f, g, h] => by_key([*a, *b, *c, *d, *e, *f, *g, *h], row, scale, kept),
-                    many => whole(many.len(), &sieve.brackets, row, scale, kept),
+    pub(super) unsafe fn sift(sieve: &Sieve, row: &[f64; LANES], scale: f64, kept: &mut Kept) {
+        let Some(keys) = &sieve.keys else {
+            edges(&sieve.edges, row, scale, &mut kept.from_edge);
+            if !sieve.brackets.is_empty() {
+                // SAFETY: as above.
+                unsafe { whole(&sieve.brackets, row, scale, kept) };
+            }
+            return;
+        };
+        // A window has two edges, and they go along with the brackets; other numbers of edges go by themselves.
+        let window: Option<&[EdgeKey; 2]> = sieve.edge_keys.as_slice().try_into().ok();
+        if window.is_none() {
+            edges(&sieve.edges, row, scale, &mut kept.from_edge);
+        }
+        // SAFETY: as above.
+        let decided = unsafe {
+            match window {
+                Some(window) => by_number(keys, window, sieve, row, scale, kept),
+                None => by_number(keys, &[], sieve, row, scale, kept),
+            }
+        };
+        if !decided {
+            edges(&sieve.edges, row, scale, &mut kept.from_edge);
+        }
+    }
+
+    /// Chooses the kernel for a number of brackets. Says whether the edges could be counted by their upper halves.
+    ///
+    /// # Safety
+    /// As [`by_key`].
+    #[inline]
+    #[target_feature(enable = "avx512f,popcnt")]
+    unsafe fn by_number<const E: usize>(
+        keys: &[(u32, u32)],
+        edges: &[EdgeKey; E],
+        sieve: &Sieve,
+        row: &[f64; LANES],
+        scale: f64,
+        kept: &mut Kept,
+    ) -> bool {
+        // SAFETY: as the caller's.
+        unsafe {
+            match *keys {
+                [] => by_key([], edges, row, scale, kept),
+                [a] => by_key([a], edges, row, scale, kept),
+                [a, b] => by_key([a, b], edges, row, scale, kept),
+                [a, b, c] => by_key([a, b, c], edges, row, scale, kept),
+                [a, b, c, d] => by_key([a, b, c, d], edges, row, scale, kept),
+                [a, b, c, d, e] => by_key([a, b, c, d, e], edges, row, scale, kept),
+                [a, b, c, d, e, f] => by_key([a, b, c, d, e, f], edges, row, scale, kept),
+                [a, b, c, d, e, f, g] => by_key([a, b, c, d, e, f, g], edges, row, scale, kept),
+                [a, b, c, d, e, f, g, h] => by_key([a, b, c, d, e, f, g, h], edges, row, scale, kept),
+                _ => {
+                    whole(&sieve.brackets, row, scale, kept);
+                    by_key([], edges, row, scale, kept)
                 }
-            },
-            // SAFETY: as above.
-            None if !sieve.brackets.is_empty() => unsafe {
-                whole(sieve.brackets.len(), &sieve.brackets, row, scale, kept);
-            },
-            None => (),
+            }
         }
     }
 
     /// Vector `index` of a row.
     #[inline]
     #[target_feature(enable = "avx512f")]
-    fn value(row: &Row, index: usize) -> __m512d {
+    fn value(row: &[f64; LANES], index: usize) -> __m512d {
         assert!(index < LANES / 8);
-        // SAFETY: a row is 64-byte aligned and holds LANES / 8 vectors of eight.
-        unsafe { _mm512_load_pd(row.0.as_ptr().add(8 * index)) }
+        // SAFETY: a row holds LANES / 8 vectors of eight.
+        unsafe { _mm512_loadu_pd(row.as_ptr().add(8 * index)) }
     }
 
-    /// Brackets whose ends the upper half of a value decides.
+    /// Brackets and edges that the upper half of a value decides. Says whether it did for all edges; else none was counted.
     ///
     /// # Safety
-    /// `kept.values` must have room for [`ROOM`] more.
+    /// `kept.values` must have room for [`ROOM`] more if there are brackets.
     #[inline]
     #[target_feature(enable = "avx512f,popcnt")]
-    unsafe fn by_key<const N: usize>(brackets: [(u32, u32); N], row: &Row, scale: f64, kept: &mut Kept) {
-        debug_assert!(N <= TURN && kept.values.capacity() - kept.values.len() >= ROOM);
+    unsafe fn by_key<const N: usize, const E: usize>(
+        brackets: [(u32, u32); N],
+        edges: &[EdgeKey; E],
+        row: &[f64; LANES],
+        scale: f64,
+        kept: &mut Kept,
+    ) -> bool {
+        debug_assert!(N == 0 || kept.values.capacity() - kept.values.len() >= ROOM);
         let scale = _mm512_set1_pd(scale);
         let odd = _mm512_setr_epi32(1, 3, 5, 7, 9, 11, 13, 15, 17, 19, 21, 23, 25, 27, 29, 31);
-        let lows = brackets.map(|(low, _)| _mm512_set1_epi32(low.cast_signed()));
-        let highs = brackets.map(|(_, high)| _mm512_set1_epi32(high.cast_signed()));
-        let (mut from, mut held) = ([0u32; N], [0u32; N]);
+        let lows = brackets.map(|(low, _)| splat(low));
+        let highs = brackets.map(|(_, high)| splat(high));
+        let froms = edges.map(|edge| splat(edge.from));
+        // No value has the key of a number that is none.
+        let doubtful = edges.map(|edge| splat(edge.doubtful.unwrap_or(u32::MAX)));
+        let (mut from, mut held, mut at_edge, mut doubts) = ([0u32; N], [0u32; N], [0u32; E], 0);
         let mut end = kept.values.len();
         let start = kept.values.as_mut_ptr();
         for pair in 0..LANES / 16 {
@@ -355,13 +438,21 @@ mod avx512 {
                 held[bracket] += within.count_ones();
                 any |= within;
             }
-            // SAFETY: at most LANES values are kept in all, and a store writes at most 8 past the last: the caller made that
-            // room.
-            unsafe {
-                _mm512_storeu_pd(start.add(end), _mm512_maskz_compress_pd(any as u8, low));
-                end += (any as u8).count_ones() as usize;
-                _mm512_storeu_pd(start.add(end), _mm512_maskz_compress_pd((any >> 8) as u8, high));
-                end += (any >> 8).count_ones() as usize;
+            for edge in 0..E {
+                at_edge[edge] += _mm512_cmpge_epu32_mask(key, froms[edge]).count_ones();
+                if edges[edge].doubtful.is_some() {
+                    doubts |= _mm512_cmpeq_epu32_mask(key, doubtful[edge]);
+                }
+            }
+            if N > 0 {
+                // SAFETY: at most LANES values are kept in all, and a store writes at most 8 past the last: the caller made
+                // that room.
+                unsafe {
+                    _mm512_storeu_pd(start.add(end), _mm512_maskz_compress_pd(any as u8, low));
+                    end += (any as u8).count_ones() as usize;
+                    _mm512_storeu_pd(start.add(end), _mm512_maskz_compress_pd((any >> 8) as u8, high));
+                    end += (any >> 8).count_ones() as usize;
+                }
             }
         }
         // SAFETY: the values up to `end` were just written, within the capacity.
@@ -370,6 +461,18 @@ mod avx512 {
             kept.from_bracket[bracket] += u64::from(from[bracket]);
             kept.in_bracket[bracket] += u64::from(held[bracket]);
         }
+        if doubts == 0 {
+            for edge in 0..E {
+                kept.from_edge[edge] += u64::from(at_edge[edge]);
+            }
+        }
+        doubts == 0
+    }
+
+    #[inline]
+    #[target_feature(enable = "avx512f")]
+    fn splat(key: u32) -> __m512i {
+        _mm512_set1_epi32(key.cast_signed())
     }
 
     /// Any number of brackets, by whole values.
@@ -377,15 +480,14 @@ mod avx512 {
     /// # Safety
     /// `kept.values` must have room for [`ROOM`] more.
     #[target_feature(enable = "avx512f,popcnt")]
-    unsafe fn whole(count: usize, brackets: &[(f64, f64)], row: &Row, scale: f64, kept: &mut Kept) {
+    unsafe fn whole(brackets: &[(f64, f64)], row: &[f64; LANES], scale: f64, kept: &mut Kept) {
         debug_assert!(kept.values.capacity() - kept.values.len() >= ROOM);
         let scale = _mm512_set1_pd(scale);
         let mut end = kept.values.len();
         for index in 0..LANES / 8 {
             let scaled = _mm512_mul_pd(value(row, index), scale);
             let mut any = 0;
-            for bracket in 0..count {
-                let (low, high) = brackets[bracket];
+            for (bracket, &(low, high)) in brackets.iter().enumerate() {
                 // Nothing is at or above what is not a number.
                 let high = if high == f64::INFINITY { f64::NAN } else { high };
                 let at_least = _mm512_cmp_pd_mask::<_CMP_GE_OQ>(scaled, _mm512_set1_pd(low));
@@ -402,43 +504,18 @@ mod avx512 {
         unsafe { kept.values.set_len(end) };
     }
 
-    /// Counts at or above each edge. Values and edges of +0 and above are ordered by their upper halves, unless these are equal:
-    /// rare, and then the whole values decide.
-    #[inline]
+    /// Counts at or above each edge, by whole values.
     #[target_feature(enable = "avx512f,popcnt")]
-    fn edges(sieve: &Sieve, row: &Row, scale: f64, totals: &mut [u64]) {
+    fn edges(edges: &[f64], row: &[f64; LANES], scale: f64, totals: &mut [u64]) {
         let scale = _mm512_set1_pd(scale);
-        let odd = _mm512_setr_epi32(1, 3, 5, 7, 9, 11, 13, 15, 17, 19, 21, 23, 25, 27, 29, 31);
-        if let ([low, beyond], [below, above]) = (sieve.edges.as_slice(), &mut *totals)
-            && sieve.keys.is_some()
-            && low.is_sign_positive()
-            && beyond.is_sign_positive()
-        {
-            let keys = [upper(*low), upper(*beyond)].map(|key| _mm512_set1_epi32(key.cast_signed()));
-            let (mut counts, mut equal) = ([0u32; 2], 0);
-            for index in 0..LANES / 16 {
-                let first = _mm512_mul_pd(value(row, 2 * index), scale);
-                let second = _mm512_mul_pd(value(row, 2 * index + 1), scale);
-                let key = _mm512_permutex2var_epi32(_mm512_castpd_si512(first), odd, _mm512_castpd_si512(second));
-                for edge in 0..2 {
-                    counts[edge] += u32::from(_mm512_cmpge_epu32_mask(key, keys[edge])).count_ones();
-                    equal |= _mm512_cmpeq_epu32_mask(key, keys[edge]);
-                }
-            }
-            if equal == 0 {
-                *below += u64::from(counts[0]);
-                *above += u64::from(counts[1]);
-                return;
-            }
-        }
-        for (&edge, total) in sieve.edges.iter().zip(totals) {
+        for (&edge, total) in edges.iter().zip(totals) {
             *total += one_edge(edge, row, scale);
         }
     }
 
     #[inline]
     #[target_feature(enable = "avx512f,popcnt")]
-    fn one_edge(edge: f64, row: &Row, scale: __m512d) -> u64 {
+    fn one_edge(edge: f64, row: &[f64; LANES], scale: __m512d) -> u64 {
         let edge = _mm512_set1_pd(edge);
         let mut count = 0;
         for index in 0..LANES / 8 {
