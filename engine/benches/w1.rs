@@ -11,21 +11,36 @@
 #![expect(clippy::print_stdout, reason = "a bench reports on the terminal")]
 
 use std::process::Command;
-use std::time::Instant;
+use std::sync::Arc;
+use std::time::{Instant, SystemTime};
 
 use neap_engine::diagnostic::Source;
 use neap_engine::plan::{DEFAULT_MEMORY, Limits, Plan};
 use neap_engine::run::{Effort, Watch};
 use neap_engine::scenario::{Overrides, Scenario};
+use neap_engine::tables::WriteOptions;
+use rayon::ThreadPool;
 
 /// Patients of the plain computation: it is slow, and its cost a patient does not depend on their number.
 const PLAIN_PATIENTS: u64 = 20_000;
 
-fn plan(patients: u64, threads: usize) -> std::sync::Arc<Plan> {
+fn plan(patients: u64, threads: usize, intervals: bool) -> Arc<Plan> {
     let source = Source { name: "w1.toml".to_owned(), text: include_str!("data/w1.toml").to_owned() };
     let overrides = Overrides { size: Some(patients), ..Overrides::default() };
     let scenario = Scenario::parse_with(source, overrides).expect("the scenario has no faults");
-    Plan::new(scenario, &Limits { threads, memory: DEFAULT_MEMORY }).expect("it fits into the default budget")
+    let limits = Limits { threads, memory: DEFAULT_MEMORY };
+    let mut plan = Plan::new(scenario, &limits).expect("it fits into the default budget");
+    Arc::get_mut(&mut plan).expect("nobody else has it yet").intervals = intervals;
+    plan
+}
+
+/// Runs a plan some times after a warm-up; fastest first.
+fn timed(pool: &ThreadPool, plan: &Arc<Plan>, repeats: u64) -> Vec<Effort> {
+    let mut efforts: Vec<Effort> =
+        (0..=repeats).map(|_| pool.install(|| plan.run(&Watch::new())).expect("nobody interrupts").effort).collect();
+    efforts.remove(0);
+    efforts.sort_by(|a, b| a.total.total_cmp(&b.total));
+    efforts
 }
 
 fn main() {
@@ -34,14 +49,10 @@ fn main() {
     let threads = numbers.get(1).map_or(2, |&threads| threads as usize);
     let repeats = numbers.get(2).copied().unwrap_or(7);
     let pool = rayon::ThreadPoolBuilder::new().num_threads(threads).build().expect("a pool of threads");
-    let plan = plan(patients, threads);
-    let mut efforts: Vec<Effort> = Vec::new();
-    for _ in 0..=repeats {
-        efforts.push(pool.install(|| plan.run(&Watch::new())).expect("nobody interrupts").effort);
-    }
-    efforts.remove(0); // The first one warms up.
-    efforts.sort_by(|a, b| a.total.total_cmp(&b.total));
-    let median = &efforts[efforts.len() / 2];
+    let with = plan(patients, threads, true);
+    let efforts = timed(&pool, &with, repeats);
+    let without = timed(&pool, &plan(patients, threads, false), repeats);
+    let (median, bare) = (&efforts[efforts.len() / 2], &without[without.len() / 2]);
     println!("{patients} patients, {threads} threads, median of {repeats}");
     println!("  whole run          {:8.1} ms   (fastest {:.1} ms)", 1e3 * median.total, 1e3 * efforts[0].total);
     println!("  a patient          {:8.1} ns", 1e9 * median.total / patients as f64);
@@ -51,10 +62,13 @@ fn main() {
     println!("  solving            {:8.1} ms   a thread", share * median.solving);
     println!("  counting, keeping  {:8.1} ms   a thread", share * median.counting);
     println!("  selecting          {:8.1} ms   wall, four order statistics a percentile", 1e3 * median.selecting);
+    println!("    two of them only {:8.1} ms   wall, without intervals", 1e3 * bare.selecting);
+    println!("  writing            {:8.1} ms   wall", 1e3 * writing(&pool, &with));
     println!("  passes             {:8}      of which repeated: {}", median.passes, median.repeats);
+    println!("without intervals    {:8.1} ms   (fastest {:.1} ms)", 1e3 * bare.total, 1e3 * without[0].total);
 
     let start = Instant::now();
-    let middle = plain(&self::plan(PLAIN_PATIENTS, 1));
+    let middle = plain(&self::plan(PLAIN_PATIENTS, 1, false));
     let plain = start.elapsed().as_secs_f64() / PLAIN_PATIENTS as f64;
     let each = median.total * threads as f64 / patients as f64;
     println!("plain loop, one thread: {:.0} ns a patient (median at the end {middle:.3} mg/L)", 1e9 * plain);
@@ -62,6 +76,16 @@ fn main() {
     if let Ok(command) = std::env::var("NEAP_YARDSTICK") {
         yardstick(&command, efforts[0].total, median.total);
     }
+}
+
+/// Seconds from results to closed files.
+fn writing(pool: &ThreadPool, plan: &Arc<Plan>) -> f64 {
+    let results = pool.install(|| plan.run(&Watch::new())).expect("nobody interrupts");
+    let options = WriteOptions { replace: false, patients: false, started: SystemTime::now() };
+    let folder = tempfile::tempdir().expect("a folder to write to");
+    let start = Instant::now();
+    results.write(&folder.path().join("out"), &options, &Watch::new()).expect("the tables are written");
+    start.elapsed().as_secs_f64()
 }
 
 fn yardstick(command: &str, fastest: f64, median: f64) {

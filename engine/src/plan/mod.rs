@@ -36,6 +36,8 @@ pub struct Plan {
     pub timetable: Timetable,
     /// The window in kernel units; `None` without one.
     pub window: Option<WindowEdges>,
+    /// Whether percentiles get their intervals: always, but where their price is measured.
+    pub intervals: bool,
 }
 
 impl Plan {
@@ -59,6 +61,7 @@ impl Plan {
             protocol,
             timetable,
             window,
+            intervals: true,
             limits: *limits,
             scenario,
         };

@@ -38,8 +38,11 @@ impl Plan {
         let start = Instant::now();
         let patients = self.scenario().population.size;
         watch.enter(Stage::Pilot);
-        let signals: Vec<Ranks> =
-            self.scenario().output.percentiles.iter().map(|p| Ranks::new(p, patients, INTERVAL_LEVEL)).collect();
+        let ranks = |percentile| {
+            let ranks = Ranks::new(percentile, patients, INTERVAL_LEVEL);
+            if self.intervals { ranks } else { Ranks { lower: None, upper: None, ..ranks } }
+        };
+        let signals: Vec<Ranks> = self.scenario().output.percentiles.iter().map(ranks).collect();
         let answer = self.answer(&signals, patients, watch)?;
         let effort = Effort {
             threads: rayon::current_num_threads(),
