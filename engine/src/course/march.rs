@@ -39,8 +39,8 @@ pub struct March {
 #[derive(Debug)]
 struct Kept<T> {
     slots: Vec<Option<usize>>,
-    kept: Vec<T>,
-    /// Spans of the kept ones.
+    items: Vec<T>,
+    /// Spans of the items.
     spans: Vec<usize>,
 }
 
@@ -54,11 +54,11 @@ impl<T: Clone + Default> Kept<T> {
         for (slot, &span) in spans.iter().enumerate() {
             slots[span] = Some(slot);
         }
-        Self { slots, kept: vec![T::default(); spans.len()], spans }
+        Self { slots, items: vec![T::default(); spans.len()], spans }
     }
 
     fn get(&self, span: usize) -> Option<&T> {
-        self.slots[span].map(|slot| &self.kept[slot])
+        self.slots[span].map(|slot| &self.items[slot])
     }
 }
 
@@ -115,6 +115,9 @@ impl March {
     }
 
     /// Starts a block: rates, kept step matrices, empty compartments.
+    ///
+    /// # Panics
+    /// If a parameter of the structure is missing.
     pub fn start<'a>(&mut self, timetable: &Timetable, parameter: impl Fn(Role) -> Option<&'a Row>) {
         let needed = |role| parameter(role).expect("the scenario's check made sure that the model has its parameters");
         self.rates.fill(&self.structure, needed);
@@ -128,10 +131,10 @@ impl March {
             self.shortest_lag = self.lag.iter().copied().fold(f64::INFINITY, f64::min);
             self.longest_lag = self.lag.iter().copied().fold(0.0, f64::max);
         }
-        for (matrix, &span) in self.steps.kept.iter_mut().zip(&self.steps.spans) {
+        for (matrix, &span) in self.steps.items.iter_mut().zip(&self.steps.spans) {
             matrix.fill(&self.structure, &self.rates, &Row::splat(timetable.spans[span]));
         }
-        for (infused, &span) in self.runs.kept.iter_mut().zip(&self.runs.spans) {
+        for (infused, &span) in self.runs.items.iter_mut().zip(&self.runs.spans) {
             infused.fill(&self.structure, &self.rates, timetable.spans[span]);
         }
         for state in &mut self.states {
@@ -166,9 +169,9 @@ impl March {
                         &self.step
                     };
                     let State { gut, central, peripheral, concentrations, .. } = &mut *state;
-                    let amounts = Amounts { gut, central, peripheral };
+                    let mut amounts = Amounts { gut, central, peripheral };
                     let rows = &mut concentrations[index - start..end - start];
-                    run(track.oral, self.structure.peripheral.is_some(), matrix, amounts, rows);
+                    run(track.oral, self.structure.peripheral.is_some(), matrix, &mut amounts, rows);
                     index = end - 1;
                 }
                 state.started = true;
@@ -323,7 +326,7 @@ struct Amounts<'a> {
 }
 
 #[multiversion(targets("x86_64+avx512f+avx512bw+avx512dq+avx512vl", "x86_64+avx2"))]
-fn run(gut: bool, peripheral: bool, matrix: &Step, amounts: Amounts<'_>, rows: &mut [Row]) {
+fn run(gut: bool, peripheral: bool, matrix: &Step, amounts: &mut Amounts<'_>, rows: &mut [Row]) {
     match (gut, peripheral) {
         (false, false) => steps::<false, false>(matrix, amounts, rows),
         (false, true) => steps::<false, true>(matrix, amounts, rows),
@@ -337,7 +340,7 @@ const ABREAST: usize = 8;
 
 /// One step for each of `rows`, which take the central amounts.
 #[inline(always)]
-fn steps<const GUT: bool, const PERIPHERAL: bool>(m: &Step, amounts: Amounts<'_>, rows: &mut [Row]) {
+fn steps<const GUT: bool, const PERIPHERAL: bool>(m: &Step, amounts: &mut Amounts<'_>, rows: &mut [Row]) {
     for first in (0..LANES).step_by(ABREAST) {
         let (cc, cp, cg) = (lanes(&m.cc, first), lanes(&m.cp, first), lanes(&m.cg, first));
         let (pp, pc, pg) = (lanes(&m.pp, first), lanes(&m.pc, first), lanes(&m.pg, first));

@@ -195,11 +195,12 @@ pub struct Impossible {
 /// Whether all lanes are finite and at least `least`.
 #[multiversion(targets("x86_64+avx512f+avx512bw+avx512dq+avx512vl", "x86_64+avx2"))]
 fn within(row: &Row, least: f64) -> bool {
-    let mut outside = 0u64;
+    let mut inside = 1u64;
     for value in &row.0 {
-        outside |= u64::from(!(*value >= least)) | u64::from(!(*value <= f64::MAX));
+        // Not a number is neither.
+        inside &= u64::from(*value >= least) & u64::from(*value <= f64::MAX);
     }
-    outside == 0
+    inside == 1
 }
 
 /// One value of a parameter whose random part needs more than an exponential, limits by inversion.

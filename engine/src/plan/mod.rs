@@ -45,6 +45,9 @@ impl Plan {
     ///
     /// # Errors
     /// [`Fault::Refused`] where the budget is too small for the blocks in work.
+    ///
+    /// # Panics
+    /// If a shorthand is not a structure that the solver knows; each is.
     pub fn new(scenario: Scenario, limits: &Limits) -> Result<Arc<Self>, Fault> {
         let protocol = Protocol::new(&scenario.arms);
         let individuals = Individuals::new(&scenario, 0);

@@ -73,7 +73,9 @@ fn population(plan: &Plan, patients: u64) -> Vec<Vec<f64>> {
             values.extend_from_slice(&row[..count]);
         }
     }
-    values.iter_mut().for_each(|values| values.sort_unstable_by(f64::total_cmp));
+    for values in &mut values {
+        values.sort_unstable_by(f64::total_cmp);
+    }
     values
 }
 

@@ -76,15 +76,12 @@ fn rows(plan: &Plan, patients: u64, ranks: &[Ranks], found: &[Series], moments: 
             }));
             continue;
         }
-        let (quantity, unit, asked) = match covariate {
-            Some(covariate) => {
-                let unit = covariate.unit.as_ref().map_or("1", |unit| unit.text.as_str());
-                (covariate.name.as_str(), unit, Asked::of(covariate, covariates))
-            }
-            None => {
-                let role = scenario.drug.parameters[index - covariates.len()].role;
-                (role.name(scenario.drug.model), role.unit(), None)
-            }
+        let (quantity, unit, asked) = if let Some(covariate) = covariate {
+            let unit = covariate.unit.as_ref().map_or("1", |unit| unit.text.as_str());
+            (covariate.name.as_str(), unit, Asked::of(covariate, covariates))
+        } else {
+            let role = scenario.drug.parameters[index - covariates.len()].role;
+            (role.name(scenario.drug.model), role.unit(), None)
         };
         let (mean, sd) = moments[index].mean_and_sd(centres[index], patients);
         let mut row = |statistic: String, asked: Option<f64>, realised: f64| {

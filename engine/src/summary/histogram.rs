@@ -24,6 +24,9 @@ fn upper(value: f64) -> u32 {
 
 impl Cells {
     /// Cells that cover a sample of non-negative values, and somewhat more; zeros fall into the first cell.
+    ///
+    /// # Panics
+    /// Never: 32 bits can be shifted away.
     pub fn covering(sample: &[f64]) -> Self {
         let positive = || sample.iter().copied().filter(|&value| value > 0.0);
         let least = upper(positive().fold(f64::INFINITY, f64::min)).saturating_sub(MARGIN << 20).max(1);

@@ -15,6 +15,9 @@ pub struct Pilot {
 
 impl Pilot {
     /// A pilot of `size` patients for the order statistics of `patients` patients.
+    ///
+    /// # Panics
+    /// Never: every percentile has an order statistic.
     pub fn new(wanted: &[Ranks], patients: u64, size: u64) -> Self {
         let place = |rank: u64| rank as f64 / (patients - 1) as f64 * (size - 1) as f64;
         let spans = wanted

@@ -23,6 +23,9 @@ pub struct Ranks {
 
 impl Ranks {
     /// Of a percentile (between 0 and 100) among `n` values, at least one, with the interval of confidence `level`.
+    ///
+    /// # Panics
+    /// If the percentile is outside 0 to 100 or there are no values.
     pub fn new(percentile: &Exact, n: u64, level: f64) -> Self {
         let probability = percentile / Exact::from_integer(BigInt::from(100));
         let place = &probability * Exact::from_integer(BigInt::from(n - 1));
