@@ -159,7 +159,7 @@ mod tests {
                     [0, 0, 1, 5, 5, 40].iter().map(|r| start + r).filter(|&r| r < sorted.len()).collect();
                 let mut found = vec![f64::NAN; ranks.len()];
                 select(&[one, other], bracket, &ranks, &mut Scratch::default(), &mut |place, value| {
-                    found[place] = value
+                    found[place] = value;
                 });
                 assert_eq!(found, ranks.iter().map(|&r| sorted[r]).collect::<Vec<_>>(), "{count} values from {start}");
             }

@@ -384,8 +384,7 @@ mod avx512 {
         for index in 0..LANES / 8 {
             let scaled = _mm512_mul_pd(value(row, index), scale);
             let mut any = 0;
-            for bracket in 0..count {
-                let (low, high) = brackets[bracket];
+            for (bracket, &(low, high)) in brackets.iter().take(count).enumerate() {
                 // Nothing is at or above what is not a number.
                 let high = if high == f64::INFINITY { f64::NAN } else { high };
                 let at_least = _mm512_cmp_pd_mask::<_CMP_GE_OQ>(scaled, _mm512_set1_pd(low));
