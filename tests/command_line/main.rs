@@ -302,8 +302,9 @@ fn a_reader_that_goes_away_is_no_crash() {
 #[test]
 fn threads_and_memory_change_no_byte() {
     let folder = fresh(SCENARIO);
+    let least = least_memory(&folder);
     let table_of = |out: &str, more: &[&str]| {
-        let arguments = [&["run", "arm.toml", "--patients-table", "--out", out], more].concat();
+        let arguments = [&["run", "arm.toml", "--patients", "60000", "--patients-table", "--out", out], more].concat();
         let output = run(&folder, &arguments);
         assert_eq!(output.status.code(), Some(0), "{}", text(&output.stderr));
         tables(folder.path().join(out))
@@ -314,7 +315,7 @@ fn threads_and_memory_change_no_byte() {
         ("two", &["--threads", "2"][..]),
         ("seven", &["--threads", "7"]),
         ("again", &["--threads", "1"]),
-        ("tight", &["--threads", "1", "--memory", "7MiB"]),
+        ("tight", &["--threads", "1", "--memory", &least]),
         ("wide", &["--threads", "2", "--memory", "2GiB"]),
     ] {
         let other = table_of(out, more);
@@ -330,13 +331,20 @@ fn threads_and_memory_change_no_byte() {
     assert!(passes("tight") > passes("one"), "the tight budget takes {} passes", passes("tight"));
 }
 
+/// The least budget with which the scenario runs on one thread: what the refusal of a smaller one asks for.
+fn least_memory(folder: &TempDir) -> String {
+    let said = refused(folder, &["run", "arm.toml", "--threads", "1", "--memory", "1MiB"], 2);
+    let wanted = said.split("at least ").nth(1).and_then(|rest| rest.split(" MiB").next());
+    format!("{}MiB", wanted.unwrap_or_else(|| panic!("how much would do: {said}")))
+}
+
 /// Memory is bounded by the budget, not by the number of values: the 180 million of this run would take 1.4 GB if they were
 /// stored, and the process may have 700 MB of addresses, of which threads and their heaps reserve some 300 without using them.
 #[test]
 #[cfg(target_os = "linux")]
 fn memory_is_bounded_by_the_budget() {
     let folder = fresh(SCENARIO);
-    let line = "ulimit -v 700000; exec \"$0\" run arm.toml --patients 620000 --memory 24MiB --threads 2 --out out";
+    let line = "ulimit -v 700000; exec \"$0\" run arm.toml --patients 620000 --memory 40MiB --threads 2 --out out";
     let output = Command::new("bash")
         .args(["-c", line, env!("CARGO_BIN_EXE_neap")])
         .current_dir(&folder)

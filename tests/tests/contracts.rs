@@ -293,6 +293,32 @@ fn twice_the_dose_is_twice_the_concentration() {
     }
 }
 
+/// Within means `low <= C <= high`: 100 mg in 40 L are 2.5 mg/L, and a placebo's zero is within a window that has no low.
+#[test]
+fn both_limits_belong_to_the_window() {
+    let text = |window: &str, amount: u32| {
+        format!(
+            "neap = 1\n[population]\nsize = 10000\nseed = 1\n[drug]\nname = \"invented\"\nmodel = \"one-compartment\"\n\
+             [drug.parameter.clearance]\ntypical = \"5 L/h\"\n[drug.parameter.volume]\ntypical = \"40 L\"\n[[arm]]\n\
+             name = \"only\"\n[[arm.dose]]\namount = \"{amount} mg\"\nroute = \"bolus\"\n[window]\n{window}\n[output]\n\
+             times = [\"0 h\"]\n"
+        )
+    };
+    for (window, amount, expected) in [
+        ("low = \"2.5 mg/L\"", 100, [0, 10_000, 0]),
+        ("high = \"2.5 mg/L\"", 100, [0, 10_000, 0]),
+        ("low = \"2.5 mg/L\"\nhigh = \"3 mg/L\"", 100, [0, 10_000, 0]),
+        ("low = \"1 mg/L\"\nhigh = \"2500 ug/L\"", 100, [0, 10_000, 0]),
+        ("low = \"2.5000000000000005 mg/L\"", 100, [10_000, 0, 0]),
+        ("high = \"2.4999999999999995 mg/L\"", 100, [0, 0, 10_000]),
+        ("high = \"1 mg/L\"", 0, [0, 10_000, 0]),
+        ("low = \"1 mg/L\"", 0, [10_000, 0, 0]),
+    ] {
+        let shares = run(&text(window, amount)).arms[0].times[0].shares.expect("there is a window");
+        assert_eq!([shares.below, shares.within, shares.above], expected, "{window}, {amount} mg");
+    }
+}
+
 /// Equal quantities in other units are the same bits.
 #[test]
 fn spelling_changes_no_bit() {

@@ -59,22 +59,22 @@ impl Rates {
         match structure.peripheral {
             None => {
                 for lane in 0..LANES {
-                    self.alpha[lane] = clearance[lane] / volume[lane];
+                    self.alpha[lane] = clearance[lane] * self.per_volume[lane];
                 }
                 self.fast = Row::splat(1.0);
             }
             Some((exchange, peripheral)) => {
-                two_compartments(clearance, volume, row(exchange), row(peripheral), self);
+                two_compartments(clearance, row(exchange), row(peripheral), self);
             }
         }
     }
 }
 
 #[multiversion(targets("x86_64+avx512f+avx512bw+avx512dq+avx512vl", "x86_64+avx2"))]
-fn two_compartments(clearance: &Row, volume: &Row, exchange: &Row, peripheral: &Row, rates: &mut Rates) {
+fn two_compartments(clearance: &Row, exchange: &Row, peripheral: &Row, rates: &mut Rates) {
     for lane in 0..LANES {
-        let k10 = clearance.0[lane] / volume.0[lane];
-        let k12 = exchange.0[lane] / volume.0[lane];
+        let k10 = clearance.0[lane] * rates.per_volume.0[lane];
+        let k12 = exchange.0[lane] * rates.per_volume.0[lane];
         let k21 = exchange.0[lane] / peripheral.0[lane];
         let (alpha, beta, fast, slow) = disposition(k10, k12, k21);
         rates.alpha.0[lane] = alpha;
@@ -101,10 +101,10 @@ fn disposition(k10: f64, k12: f64, k21: f64) -> (f64, f64, f64, f64) {
     let beta = if alpha > 0.0 { k10 * k21 / alpha } else { 0.0 };
     let large = 0.5 * (d.abs() + root);
     let small = if large > 0.0 { product / large } else { 0.0 };
-    let spread = if root > 0.0 { root } else { 1.0 };
+    let per_spread = if root > 0.0 { 1.0 / root } else { 1.0 };
     let (above, below) = if d >= 0.0 { (large, small) } else { (small, large) };
-    let fast = if root > 0.0 { above / spread } else { 1.0 };
-    (alpha, beta, fast, below / spread)
+    let fast = if root > 0.0 { above * per_spread } else { 1.0 };
+    (alpha, beta, fast, below * per_spread)
 }
 
 #[cfg(test)]

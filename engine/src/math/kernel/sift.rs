@@ -143,6 +143,7 @@ impl Sieve {
     }
 
     /// A sieve of the same kind with other brackets and no edges.
+    #[must_use]
     pub fn with_brackets(&self, brackets: &[(f64, f64)]) -> Self {
         if self.keys.is_some() { Self::wide(brackets, &[]) } else { Self::exact(brackets, &[]) }
     }
@@ -462,8 +463,8 @@ mod avx512 {
             kept.in_bracket[bracket] += u64::from(held[bracket]);
         }
         if doubts == 0 {
-            for edge in 0..E {
-                kept.from_edge[edge] += u64::from(at_edge[edge]);
+            for (total, count) in kept.from_edge.iter_mut().zip(at_edge) {
+                *total += u64::from(count);
             }
         }
         doubts == 0
