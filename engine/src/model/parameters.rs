@@ -192,15 +192,16 @@ pub struct Impossible {
     pub value: f64,
 }
 
-/// Whether all lanes are finite and at least `least`.
+/// Whether all lanes are finite and at least `least`, which is not negative: their bits order as they do, and those of negative
+/// values, infinities and what is not a number lie above.
 #[multiversion(targets("x86_64+avx512f+avx512bw+avx512dq+avx512vl", "x86_64+avx2"))]
 fn within(row: &Row, least: f64) -> bool {
-    let mut inside = 1u64;
+    let mut most = 0;
     for value in &row.0 {
-        // Not a number is neither.
-        inside &= u64::from(*value >= least) & u64::from(*value <= f64::MAX);
+        let above = value.to_bits().wrapping_sub(least.to_bits());
+        most = if above > most { above } else { most };
     }
-    inside == 1
+    most <= f64::MAX.to_bits() - least.to_bits()
 }
 
 /// One value of a parameter whose random part needs more than an exponential, limits by inversion.

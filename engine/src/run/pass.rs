@@ -133,7 +133,9 @@ impl Sink for Absorb<'_> {
     }
 
     fn soon(&self, series: usize) {
-        self.partial.prefetch(series);
+        if let Some(search) = &self.aims.searches[series] {
+            self.partial.prefetch(series, search);
+        }
     }
 
     fn signal(&mut self, series: usize, row: &Row, scale: f64) {

@@ -73,8 +73,8 @@ impl<'a> Worker<'a> {
             for index in start..end {
                 for arm in 0..plan.protocol.arms.len() {
                     let series = arm * times + index;
-                    if index + 1 < until {
-                        sink.soon(series + 1);
+                    if index + 2 < until {
+                        sink.soon(series + 2);
                     }
                     if sink.wants(series) {
                         let rows =

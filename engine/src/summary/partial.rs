@@ -1,5 +1,7 @@
 //! What some patients contribute: absorbed block by block, merged in any order, the same whatever the split.
 
+use multiversion::multiversion;
+
 use crate::math::{ExactSum, Kept, Row, SUM_WORDS};
 
 use super::Search;
@@ -16,14 +18,7 @@ pub struct Moments {
 impl Moments {
     /// Adds the first `count` lanes. Inside a block the sum has a fixed order; blocks are added exactly, in any order.
     pub fn absorb(&mut self, row: &Row, centre: f64, count: usize) {
-        let (mut sums, mut squares) = ([0.0; 8], [0.0; 8]);
-        for chunk in row[..count].chunks(8) {
-            for (lane, value) in chunk.iter().enumerate() {
-                let difference = value - centre;
-                sums[lane] += difference;
-                squares[lane] += difference * difference;
-            }
-        }
+        let (sums, squares) = block_sums(row, centre, count);
         self.sum.add(sums.iter().sum());
         self.squares.add(squares.iter().sum());
     }
@@ -40,6 +35,26 @@ impl Moments {
         self.sum.merge(&other.sum);
         self.squares.merge(&other.squares);
     }
+}
+
+/// Sums of differences from a centre and of their squares, in eight interleaved parts: the same order at every vector width.
+#[multiversion(targets("x86_64+avx512f+avx512bw+avx512dq+avx512vl", "x86_64+avx2"))]
+fn block_sums(row: &Row, centre: f64, count: usize) -> ([f64; 8], [f64; 8]) {
+    let (mut sums, mut squares) = ([0.0; 8], [0.0; 8]);
+    let (chunks, rest) = row.0[..count].as_chunks::<8>();
+    for chunk in chunks {
+        for lane in 0..8 {
+            let difference = chunk[lane] - centre;
+            sums[lane] += difference;
+            squares[lane] += difference * difference;
+        }
+    }
+    for (lane, value) in rest.iter().enumerate() {
+        let difference = value - centre;
+        sums[lane] += difference;
+        squares[lane] += difference * difference;
+    }
+    (sums, squares)
 }
 
 /// What some patients contribute to every series of a pass.
@@ -66,10 +81,10 @@ impl Partial {
         search.sieve().sift(row, scale, count, &mut self.kept[series]);
     }
 
-    /// Prepares for the next block of a series: see [`Kept::prefetch`].
+    /// Prepares for the next block of a series: see [`crate::math::Sieve::prefetch`].
     #[inline]
-    pub fn prefetch(&self, series: usize) {
-        self.kept[series].prefetch();
+    pub fn prefetch(&self, series: usize, search: &Search) {
+        search.sieve().prefetch(&self.kept[series]);
     }
 
     /// Adds what other patients contributed to the same searches.

@@ -17,7 +17,7 @@ const LEAST_SAMPLE: usize = 32;
 /// Buffers to be used again.
 #[derive(Debug, Default)]
 pub struct Scratch {
-    sample: Vec<f64>,
+    sample: Vec<u64>,
     picked: Vec<f64>,
     keys: Vec<u64>,
 }
@@ -88,10 +88,11 @@ impl Parts {
         scratch.sample.clear();
         for values in lists {
             let taken = left.min(values.len());
-            scratch.sample.extend_from_slice(&values[..taken]);
+            scratch.sample.extend(values[..taken].iter().map(|&value| order_key(value)));
             left -= taken;
         }
-        scratch.sample.sort_unstable_by(f64::total_cmp);
+        // Integers sort faster than values.
+        scratch.sample.sort_unstable();
         let parts: Option<Vec<(f64, f64)>> = brackets.iter().map(|bracket| bracket.part(&scratch.sample)).collect();
         let sieve = sieve.with_brackets(&parts?);
         let mut kept = sieve.nothing(total);
@@ -115,13 +116,13 @@ impl Parts {
 }
 
 impl Bracket {
-    /// Where the wanted ranks are expected, by a sorted sample of the values of all brackets.
-    fn part(&self, sample: &[f64]) -> Option<(f64, f64)> {
+    /// Where the wanted ranks are expected, by the sorted keys of a sample of the values of all brackets.
+    fn part(&self, sample: &[u64]) -> Option<(f64, f64)> {
         let (Some(&first), Some(&last)) = (self.ranks.first(), self.ranks.last()) else {
             return Some((self.low, self.low));
         };
-        let start = sample.partition_point(|&value| value < self.low);
-        let end = start + sample[start..].partition_point(|&value| value < self.high || self.high == f64::INFINITY);
+        let start = sample.partition_point(|&key| key < order_key(self.low));
+        let end = start + sample[start..].partition_point(|&key| key < order_key(self.high));
         let sample = &sample[start..end];
         if sample.len() < LEAST_SAMPLE {
             return None;
@@ -132,8 +133,8 @@ impl Bracket {
             p * sampled + side * (WIDTHS * (sampled * p * (1.0 - p)).sqrt() + 1.0)
         };
         let (from, to) = (place(first, -1.0), place(last, 1.0));
-        let low = if from < 0.0 { self.low } else { sample[from as usize] };
-        Some((low, sample.get(to as usize).copied().unwrap_or(self.high)))
+        let low = if from < 0.0 { self.low } else { from_order_key(sample[from as usize]) };
+        Some((low, sample.get(to as usize).map_or(self.high, |&key| from_order_key(key))))
     }
 }
 

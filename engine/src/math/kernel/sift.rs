@@ -89,14 +89,6 @@ impl Kept {
         add(&mut self.from_edge, &other.from_edge);
         self.full.extend(other.lists().map(<[f64]>::to_vec));
     }
-
-    /// Asks the processor to fetch the lines that the next block's values will be written to. Each series has a list of its own,
-    /// whose end has long left the cache; without this, stores to it hold up all that follow.
-    #[inline]
-    pub fn prefetch(&self) {
-        #[cfg(target_arch = "x86_64")]
-        avx512::prefetch(&self.values);
-    }
 }
 
 /// Room that a block may need: its lanes, and the rest of the vector that the last of them stands in.
@@ -140,6 +132,23 @@ impl Sieve {
     /// A sieve whose brackets act exactly as given, for values of any sign.
     pub fn exact(brackets: &[(f64, f64)], edges: &[f64]) -> Self {
         Self { brackets: brackets.to_vec(), keys: None, edges: edges.to_vec(), edge_keys: Vec::new() }
+    }
+
+    /// Asks the processor to fetch what sifting into `kept` will soon need. Each series has a list of its own, whose end has long left
+    /// the cache: without this, stores to it hold up all that follow. The same goes for its counts and its brackets.
+    #[inline]
+    pub fn prefetch(&self, kept: &Kept) {
+        #[cfg(target_arch = "x86_64")]
+        {
+            avx512::prefetch_list(&kept.values);
+            avx512::prefetch(&kept.from_bracket);
+            avx512::prefetch(&kept.in_bracket);
+            avx512::prefetch(&kept.from_edge);
+            avx512::prefetch(&self.edge_keys);
+            if let Some(keys) = &self.keys {
+                avx512::prefetch(keys);
+            }
+        }
     }
 
     /// A sieve of the same kind with other brackets and no edges.
@@ -306,11 +315,13 @@ mod plain {
 )]
 mod avx512 {
     use std::arch::x86_64::{
-        __m512d, __m512i, _CMP_GE_OQ, _CMP_NGE_UQ, _MM_HINT_ET0, _mm_prefetch, _mm512_castpd_si512, _mm512_cmp_pd_mask,
-        _mm512_cmpeq_epu32_mask, _mm512_cmpge_epu32_mask, _mm512_loadu_pd, _mm512_mask_cmp_pd_mask,
-        _mm512_mask_cmplt_epu32_mask, _mm512_maskz_compress_pd, _mm512_mul_pd, _mm512_permutex2var_epi32,
-        _mm512_set1_epi32, _mm512_set1_pd, _mm512_setr_epi32, _mm512_storeu_pd,
+        __m512d, __m512i, _CMP_GE_OQ, _CMP_NGE_UQ, _MM_HINT_ET0, _MM_HINT_T0, _mm_prefetch, _mm256_loadu_si256,
+        _mm512_add_epi32, _mm512_castpd_si512, _mm512_cmp_pd_mask, _mm512_cmpeq_epu32_mask, _mm512_cmpge_epu32_mask,
+        _mm512_loadu_pd, _mm512_mask_cmp_pd_mask, _mm512_mask_cmplt_epu32_mask, _mm512_mask_i32gather_pd,
+        _mm512_maskz_compress_epi32, _mm512_maskz_compress_pd, _mm512_mul_pd, _mm512_permutex2var_epi32,
+        _mm512_set1_epi32, _mm512_set1_pd, _mm512_setr_epi32, _mm512_setzero_pd, _mm512_storeu_epi32, _mm512_storeu_pd,
     };
+    use std::mem::MaybeUninit;
 
     use super::{EdgeKey, Kept, ROOM, Sieve};
     use crate::math::LANES;
@@ -318,8 +329,16 @@ mod avx512 {
     /// Lines that a block's kept values usually fill.
     const LINES: usize = 4;
 
+    /// The first line of a short list.
     #[inline]
-    pub(super) fn prefetch(values: &[f64]) {
+    pub(super) fn prefetch<T>(list: &[T]) {
+        // SAFETY: a prefetch reads and writes nothing and may name any address.
+        unsafe { _mm_prefetch::<_MM_HINT_T0>(list.as_ptr().cast()) };
+    }
+
+    /// The lines behind the end of a list.
+    #[inline]
+    pub(super) fn prefetch_list(values: &[f64]) {
         let end = values.as_ptr_range().end.cast::<i8>();
         for line in 0..LINES {
             // SAFETY: a prefetch reads and writes nothing and may name any address.
@@ -417,7 +436,7 @@ mod avx512 {
         kept: &mut Kept,
     ) -> bool {
         debug_assert!(N == 0 || kept.values.capacity() - kept.values.len() >= ROOM);
-        let scale = _mm512_set1_pd(scale);
+        let factor = _mm512_set1_pd(scale);
         let odd = _mm512_setr_epi32(1, 3, 5, 7, 9, 11, 13, 15, 17, 19, 21, 23, 25, 27, 29, 31);
         let lows = brackets.map(|(low, _)| splat(low));
         let highs = brackets.map(|(_, high)| splat(high));
@@ -425,11 +444,13 @@ mod avx512 {
         // No value has the key of a number that is none.
         let doubtful = edges.map(|edge| splat(edge.doubtful.unwrap_or(u32::MAX)));
         let (mut from, mut held, mut at_edge, mut doubts) = ([0u32; N], [0u32; N], [0u32; E], 0);
-        let mut end = kept.values.len();
-        let start = kept.values.as_mut_ptr();
+        // Which lanes are kept: written one vector after the other, each over the unused end of the one before.
+        let mut lanes = [const { MaybeUninit::<u32>::uninit() }; LANES + 16];
+        let mut count = 0;
+        let mut lane = _mm512_setr_epi32(0, 1, 2, 3, 4, 5, 6, 7, 8, 9, 10, 11, 12, 13, 14, 15);
         for pair in 0..LANES / 16 {
-            let low = _mm512_mul_pd(value(row, 2 * pair), scale);
-            let high = _mm512_mul_pd(value(row, 2 * pair + 1), scale);
+            let low = _mm512_mul_pd(value(row, 2 * pair), factor);
+            let high = _mm512_mul_pd(value(row, 2 * pair + 1), factor);
             let key = _mm512_permutex2var_epi32(_mm512_castpd_si512(low), odd, _mm512_castpd_si512(high));
             let mut any = 0;
             for bracket in 0..N {
@@ -446,18 +467,29 @@ mod avx512 {
                 }
             }
             if N > 0 {
-                // SAFETY: at most LANES values are kept in all, and a store writes at most 8 past the last: the caller made
-                // that room.
+                // SAFETY: at most LANES lanes are kept in all, and a store writes at most 16 past the last.
                 unsafe {
-                    _mm512_storeu_pd(start.add(end), _mm512_maskz_compress_pd(any as u8, low));
-                    end += (any as u8).count_ones() as usize;
-                    _mm512_storeu_pd(start.add(end), _mm512_maskz_compress_pd((any >> 8) as u8, high));
-                    end += (any >> 8).count_ones() as usize;
+                    let end = lanes.as_mut_ptr().add(count).cast::<i32>();
+                    _mm512_storeu_epi32(end, _mm512_maskz_compress_epi32(any, lane));
                 }
+                count += any.count_ones() as usize;
+                lane = _mm512_add_epi32(lane, _mm512_set1_epi32(16));
             }
         }
-        // SAFETY: the values up to `end` were just written, within the capacity.
-        unsafe { kept.values.set_len(end) };
+        let start = kept.values.len();
+        for first in (0..count).step_by(8) {
+            let some = 0xff_u8 >> 8usize.saturating_sub(count - first).min(7);
+            // SAFETY: the first `count` lanes were written and lie within the row; the others are masked. A store writes at most 8
+            // past the last value: the caller made that room.
+            unsafe {
+                let lanes = _mm256_loadu_si256(lanes.as_ptr().add(first).cast());
+                let values = _mm512_mask_i32gather_pd::<8>(_mm512_setzero_pd(), some, lanes, row.as_ptr());
+                let end = kept.values.as_mut_ptr().add(start + first);
+                _mm512_storeu_pd(end, _mm512_mul_pd(values, factor));
+            }
+        }
+        // SAFETY: `count` values were just written, within the capacity.
+        unsafe { kept.values.set_len(start + count) };
         for bracket in 0..N {
             kept.from_bracket[bracket] += u64::from(from[bracket]);
             kept.in_bracket[bracket] += u64::from(held[bracket]);
