@@ -1,7 +1,7 @@
 //! What a distribution within its limits should show: mean, standard deviation, percentiles, in closed form.
 
 use super::distribution::{Tail, lognormal_value, triangular_cdf};
-use crate::math::{exp, ln, normal_cdf};
+use crate::math::{exp, falling1, ln, normal_cdf};
 use crate::scenario::{Covariate, Distribution, Limited, Spread};
 
 /// What a quantity should show, limits included.
@@ -123,6 +123,10 @@ fn truncated_lognormal(median: f64, log_sd: f64, low: f64, high: f64) -> (f64, f
     let (a, b) = log_limits(median, log_sd, low, high);
     let mass = between(a, b);
     let square = log_sd * log_sd;
+    if a == f64::NEG_INFINITY && b == f64::INFINITY {
+        // exp(s^2) - 1 = s^2 exp(s^2) (1 - exp(-s^2)) / s^2, which does not cancel where the spread is small.
+        return (median * exp(0.5 * square), median * exp(square) * log_sd * falling1(square).sqrt());
+    }
     let mean = median * exp(0.5 * square) * between(a - log_sd, b - log_sd) / mass;
     let second = median * median * exp(2.0 * square) * between(a - 2.0 * log_sd, b - 2.0 * log_sd) / mass;
     (mean, (second - mean * mean).max(0.0).sqrt())

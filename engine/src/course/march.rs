@@ -174,6 +174,7 @@ impl March {
                     run(track.oral, self.structure.peripheral.is_some(), matrix, &mut amounts, rows);
                     index = end - 1;
                 }
+                let entering = !state.started || !track.folds[index].is_empty() || !track.lagged.is_empty();
                 state.started = true;
                 let mut folding = Folding {
                     structure: &self.structure,
@@ -192,7 +193,9 @@ impl March {
                     let lags = (self.shortest_lag, self.longest_lag);
                     folding.lagged(track, &timetable.times, index, &self.lag, lags, state);
                 }
-                state.concentrations[index - start] = state.central;
+                if entering {
+                    state.concentrations[index - start] = state.central;
+                }
                 index += 1;
             }
         }
