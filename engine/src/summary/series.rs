@@ -68,7 +68,7 @@ impl Search {
         edges.extend(points.iter().flat_map(|value| [*value, value.next_up()]));
         // Ties within brackets are kept out by comparing whole values.
         let exact = signed || (!points.is_empty() && !brackets.is_empty());
-        let sieve = if exact { Sieve::exact(&brackets, &edges) } else { Sieve::wide(&merged(&brackets), &edges) };
+        let sieve = if exact { Sieve::exact(&brackets, &edges) } else { Sieve::wide(&brackets, &edges) };
         Self { sieve, points, window: window.is_some(), share }
     }
 
@@ -152,17 +152,4 @@ pub enum Found {
     Value(f64),
     /// The bracket was missed; it lies here.
     Between(f64, f64, u64),
-}
-
-/// Brackets that touch or overlap become one. Widening moves ends by a relative 1e-6, so nearly touching ones count as
-/// touching.
-fn merged(brackets: &[(f64, f64)]) -> Vec<(f64, f64)> {
-    let mut out: Vec<(f64, f64)> = Vec::with_capacity(brackets.len());
-    for &(low, high) in brackets {
-        match out.last_mut() {
-            Some(last) if low <= last.1 * (1.0 + 4e-6) => last.1 = last.1.max(high),
-            _ => out.push((low, high)),
-        }
-    }
-    out
 }

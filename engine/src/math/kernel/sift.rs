@@ -1,7 +1,8 @@
 //! Counts values at or above some edges, and keeps those within some brackets, in one go over a block.
 //!
-//! Comparing is the cost of exact percentiles, so most comparisons look at the upper 32 bits of a value only: edges that end in
-//! 32 zero bits order the values exactly as all 64 bits would, at half the price. Values therefore must be `+0` or above.
+//! Comparing is the cost of exact percentiles, so most comparisons look at 16 bits of a value only: the ends of brackets are
+//! moved outwards to the lines of a grid, and the number of its cell orders a value as all 64 bits would, at a quarter of the
+//! price. Values therefore must be `+0` or above.
 
 use crate::math::{LANES, Row};
 
@@ -13,6 +14,81 @@ pub struct Sieve {
     /// The upper halves of the brackets' ends, where they decide; else values are compared whole.
     keys: Option<Vec<(u32, u32)>>,
     edges: Vec<f64>,
+    /// The same on a grid, where one is fine enough.
+    cells: Option<Cells>,
+}
+
+/// A sieve's brackets and edges on a grid.
+#[derive(Clone, Debug, PartialEq)]
+struct Cells {
+    grid: Grid,
+    /// First and last cell of each bracket.
+    brackets: Vec<(u16, u16)>,
+    /// One entry an edge, or empty where edges are compared whole.
+    edges: Vec<Edge>,
+}
+
+/// Where an edge lies on a grid.
+#[derive(Clone, Copy, Debug, PartialEq)]
+enum Edge {
+    /// All values are at or above it.
+    Below,
+    /// At the lower end of a cell.
+    At(u16),
+    /// Within a cell: its values must be compared whole.
+    Within(u16),
+    /// No value is at or above it.
+    Beyond,
+}
+
+/// Divides the keys, the upper halves of values, into cells of a power of two. Cell 0 also holds everything below it, the last
+/// one everything above it; the ends that a grid was made for lie between them.
+#[derive(Clone, Copy, Debug, PartialEq)]
+struct Grid {
+    base: i32,
+    shift: u32,
+}
+
+/// Coarsest grid: cells of a relative 2^-12, and 16 octaves.
+const COARSEST: u32 = 8;
+
+impl Grid {
+    /// The finest grid with all of `keys` between its first and its last cell.
+    fn new(keys: impl Iterator<Item = u32> + Clone) -> Option<Self> {
+        let (least, most) = (keys.clone().min().unwrap_or(0), keys.max().unwrap_or(0));
+        (0..=COARSEST)
+            .map(|shift| Self { base: (((least >> shift) << shift).cast_signed()) - (1 << shift), shift })
+            .find(|grid| grid.cell(most) + 1 < i32::from(u16::MAX))
+    }
+
+    fn cell(self, key: u32) -> i32 {
+        (key.cast_signed() - self.base) >> self.shift
+    }
+
+    /// The keys that `low` and `high` become if moved outwards to lines of the grid.
+    fn outwards(self, (low, high): (u32, u32)) -> (u32, u32) {
+        let rest = (1 << self.shift) - 1;
+        (low & !rest, if high == ABOVE_ALL { high } else { (high + rest) & !rest })
+    }
+
+    /// First and last cell of a bracket with its ends on lines of the grid.
+    fn bracket(self, (low, high): (u32, u32)) -> (u16, u16) {
+        let first = if low == 0 { 0 } else { self.cell(low) };
+        let last = if high == ABOVE_ALL { i32::from(u16::MAX) } else { self.cell(high) - 1 };
+        (first as u16, last as u16)
+    }
+
+    fn edge(self, edge: f64) -> Edge {
+        if edge.is_nan() {
+            Edge::Beyond
+        } else if edge <= 0.0 {
+            Edge::Below
+        } else {
+            let cell = self.cell(upper(edge)) as u16;
+            let on_line = edge.to_bits().trailing_zeros() >= 32 + self.shift;
+            if on_line { Edge::At(cell) } else { Edge::Within(cell) }
+        }
+    }
 }
 
 /// What a sieve has counted and kept of one series.
@@ -51,9 +127,9 @@ fn upper(value: f64) -> u32 {
 }
 
 impl Sieve {
-    /// A sieve for values of `+0` and above, with `brackets` that are closed below and open above and do not overlap, and single
-    /// `edges`. Each bracket is widened to the next numbers that end in 32 zero bits, a relative 1e-6;
-    /// [`Sieve::brackets`] tells its ends as they act.
+    /// A sieve for values of `+0` and above, with rising `brackets` that are closed below and open above, and single `edges`. Each
+    /// bracket is widened a little, by a relative 2.5e-4 at most at either end, and those that then touch become one;
+    /// [`Sieve::brackets`] tells them as they act.
     ///
     /// # Panics
     /// If a bracket's ends are negative or not in order.
@@ -66,14 +142,25 @@ impl Sieve {
                 (upper(low), if high == f64::INFINITY { ABOVE_ALL } else { above })
             })
             .collect();
+        let lows = keys.iter().map(|key| key.0).filter(|&low| low != 0);
+        let ends = lows.chain(keys.iter().map(|key| key.1).filter(|&high| high != ABOVE_ALL));
+        let decided = edges.iter().filter(|&&edge| edge > 0.0).map(|&edge| upper(edge));
+        let with_edges = Grid::new(ends.clone().chain(decided));
+        let grid = with_edges.or_else(|| Grid::new(ends));
+        let keys = merged(keys.iter().map(|&ends| grid.map_or(ends, |grid| grid.outwards(ends))));
+        let cells = grid.map(|grid| Cells {
+            grid,
+            brackets: keys.iter().map(|&ends| grid.bracket(ends)).collect(),
+            edges: with_edges.map_or_else(Vec::new, |grid| edges.iter().map(|&edge| grid.edge(edge)).collect()),
+        });
         let end = |key: u32| if key == ABOVE_ALL { f64::INFINITY } else { f64::from_bits(u64::from(key) << 32) };
         let brackets = keys.iter().map(|&(low, high)| (end(low), end(high))).collect();
-        Self { brackets, keys: Some(keys), edges: edges.to_vec() }
+        Self { brackets, keys: Some(keys), edges: edges.to_vec(), cells }
     }
 
     /// A sieve whose brackets act exactly as given, for values of any sign.
     pub fn exact(brackets: &[(f64, f64)], edges: &[f64]) -> Self {
-        Self { brackets: brackets.to_vec(), keys: None, edges: edges.to_vec() }
+        Self { brackets: brackets.to_vec(), keys: None, edges: edges.to_vec(), cells: None }
     }
 
     /// The brackets as they act: from the first, up to but not including the second, or to infinity and with it.
@@ -146,6 +233,18 @@ impl Sieve {
     }
 }
 
+/// Rising brackets; those that touch or overlap become one.
+fn merged(brackets: impl Iterator<Item = (u32, u32)>) -> Vec<(u32, u32)> {
+    let mut out: Vec<(u32, u32)> = Vec::new();
+    for (low, high) in brackets {
+        match out.last_mut() {
+            Some(last) if low <= last.1 => last.1 = last.1.max(high),
+            _ => out.push((low, high)),
+        }
+    }
+    out
+}
+
 mod plain {
     use multiversion::multiversion;
 
@@ -204,6 +303,21 @@ mod plain {
         (total, held)
     }
 
+    /// Lists the lanes whose bits are set; returns how many there are.
+    #[cfg(target_arch = "x86_64")]
+    pub(super) fn list(bits: &[u64; LANES / 64], lanes: &mut [u8; LANES + 64]) -> usize {
+        let mut count = 0;
+        for (index, &bits) in bits.iter().enumerate() {
+            let mut left = bits;
+            while left != 0 {
+                lanes[count] = (64 * index as u32 + left.trailing_zeros()) as u8;
+                left &= left - 1;
+                count += 1;
+            }
+        }
+        count
+    }
+
     #[multiversion(targets("x86_64+avx2"))]
     pub(super) fn edge(values: &Row, edge: f64, count: usize) -> u32 {
         let mut total = 0;
@@ -221,17 +335,16 @@ mod plain {
 )]
 mod avx512 {
     use std::arch::x86_64::{
-        __m512d, _CMP_GE_OQ, _CMP_NGE_UQ, _MM_HINT_ET0, _mm_prefetch, _mm512_castpd_si512, _mm512_cmp_pd_mask,
-        _mm512_cmpeq_epu32_mask, _mm512_cmpge_epu32_mask, _mm512_load_pd, _mm512_mask_cmp_pd_mask,
-        _mm512_mask_cmplt_epu32_mask, _mm512_maskz_compress_pd, _mm512_mul_pd, _mm512_permutex2var_epi32,
-        _mm512_set1_epi32, _mm512_set1_pd, _mm512_setr_epi32, _mm512_storeu_pd,
+        __m512d, __m512i, _CMP_GE_OQ, _CMP_NGE_UQ, _MM_HINT_ET0, _mm_prefetch, _mm512_add_epi8, _mm512_castpd_si512,
+        _mm512_cmp_pd_mask, _mm512_cmpge_epu16_mask, _mm512_load_pd, _mm512_loadu_epi8, _mm512_mask_cmp_pd_mask,
+        _mm512_mask_cmple_epu16_mask, _mm512_mask_cmpneq_epu16_mask, _mm512_maskz_compress_epi8,
+        _mm512_maskz_compress_pd, _mm512_mul_pd, _mm512_packus_epi32, _mm512_permutex2var_epi32, _mm512_set1_epi8,
+        _mm512_set1_epi16, _mm512_set1_epi32, _mm512_set1_pd, _mm512_setr_epi32, _mm512_srav_epi32, _mm512_storeu_epi8,
+        _mm512_storeu_pd, _mm512_sub_epi32, _pext_u64,
     };
 
-    use super::{Kept, ROOM, Sieve, upper};
+    use super::{Cells, Edge, Grid, Kept, ROOM, Sieve};
     use crate::math::{LANES, Row};
-
-    /// Brackets, or edges, that one turn over a row looks at: as many as keep their counts in registers.
-    const TURN: usize = 8;
 
     /// Lines that a block's kept values usually fill.
     const LINES: usize = 4;
@@ -246,35 +359,27 @@ mod avx512 {
     }
 
     pub(super) fn available() -> bool {
-        is_x86_feature_detected!("avx512f") && is_x86_feature_detected!("popcnt")
+        is_x86_feature_detected!("avx512f")
+            && is_x86_feature_detected!("avx512bw")
+            && is_x86_feature_detected!("bmi2")
+            && is_x86_feature_detected!("popcnt")
     }
 
     /// # Safety
-    /// The processor must have AVX-512F and POPCNT; `kept.values` must have room for [`ROOM`] more if there are brackets.
-    #[target_feature(enable = "avx512f,popcnt")]
+    /// The processor must be [`available`]; `kept.values` must have room for [`ROOM`] more if there are brackets.
+    #[target_feature(enable = "avx512f,avx512bw,bmi2,popcnt")]
     pub(super) unsafe fn sift(sieve: &Sieve, row: &Row, scale: f64, kept: &mut Kept) {
-        edges(sieve, row, scale, &mut kept.from_edge);
-        match &sieve.keys {
+        if let Some(cells) = &sieve.cells {
+            by_cell(sieve, cells, row, scale, kept);
+            if cells.edges.len() == sieve.edges.len() {
+                return;
+            }
+        } else if !sieve.brackets.is_empty() {
             // SAFETY: as above.
-            Some(keys) => unsafe {
-                match keys.as_slice() {
-                    [] => (),
-                    [a] => by_key([*a], row, scale, kept),
-                    [a, b] => by_key([*a, *b], row, scale, kept),
-                    [a, b, c] => by_key([*a, *b, *c], row, scale, kept),
-                    [a, b, c, d] => by_key([*a, *b, *c, *d], row, scale, kept),
-                    [a, b, c, d, e] => by_key([*a, *b, *c, *d, *e], row, scale, kept),
-                    [a, b, c, d, e, f] => by_key([*a, *b, *c, *d, *e, *f], row, scale, kept),
-                    [a, b, c, d, e, f, g] => by_key([*a, *b, *c, *d, *e, *f, *g], row, scale, kept),
-                    [a, b, c, d, e, f, g, h] => by_key([*a, *b, *c, *d, *e, *f, *g, *h], row, scale, kept),
-                    many => whole(many.len(), &sieve.brackets, row, scale, kept),
-                }
-            },
-            // SAFETY: as above.
-            None if !sieve.brackets.is_empty() => unsafe {
-                whole(sieve.brackets.len(), &sieve.brackets, row, scale, kept);
-            },
-            None => (),
+            unsafe { whole(&sieve.brackets, row, scale, kept) };
+        }
+        for (&edge, total) in sieve.edges.iter().zip(&mut kept.from_edge) {
+            *total += one_edge(edge, row, scale);
         }
     }
 
@@ -287,48 +392,132 @@ mod avx512 {
         unsafe { _mm512_load_pd(row.0.as_ptr().add(8 * index)) }
     }
 
-    /// Brackets whose ends the upper half of a value decides.
-    ///
-    /// # Safety
-    /// `kept.values` must have room for [`ROOM`] more.
+    /// The cells of a row, 32 lanes a vector: in vector `2 q` sixteen of them from lane `64 q`, taken in turns of four with
+    /// sixteen from lane `64 q + 32`; in the next vector those that follow either.
     #[inline]
-    #[target_feature(enable = "avx512f,popcnt")]
-    unsafe fn by_key<const N: usize>(brackets: [(u32, u32); N], row: &Row, scale: f64, kept: &mut Kept) {
-        debug_assert!(N <= TURN && kept.values.capacity() - kept.values.len() >= ROOM);
+    #[target_feature(enable = "avx512f,avx512bw")]
+    fn cells_of(row: &Row, scale: f64, grid: Grid) -> [__m512i; LANES / 32] {
         let scale = _mm512_set1_pd(scale);
         let odd = _mm512_setr_epi32(1, 3, 5, 7, 9, 11, 13, 15, 17, 19, 21, 23, 25, 27, 29, 31);
-        let lows = brackets.map(|(low, _)| _mm512_set1_epi32(low.cast_signed()));
-        let highs = brackets.map(|(_, high)| _mm512_set1_epi32(high.cast_signed()));
-        let (mut from, mut held) = ([0u32; N], [0u32; N]);
-        let mut end = kept.values.len();
-        let start = kept.values.as_mut_ptr();
-        for pair in 0..LANES / 16 {
-            let low = _mm512_mul_pd(value(row, 2 * pair), scale);
-            let high = _mm512_mul_pd(value(row, 2 * pair + 1), scale);
+        let (base, shift) = (_mm512_set1_epi32(grid.base), _mm512_set1_epi32(grid.shift.cast_signed()));
+        let sixteen = |group: usize| {
+            let low = _mm512_mul_pd(value(row, 2 * group), scale);
+            let high = _mm512_mul_pd(value(row, 2 * group + 1), scale);
             let key = _mm512_permutex2var_epi32(_mm512_castpd_si512(low), odd, _mm512_castpd_si512(high));
-            let mut any = 0;
-            for bracket in 0..N {
-                let at_least = _mm512_cmpge_epu32_mask(key, lows[bracket]);
-                let within = _mm512_mask_cmplt_epu32_mask(at_least, key, highs[bracket]);
-                from[bracket] += at_least.count_ones();
-                held[bracket] += within.count_ones();
-                any |= within;
+            _mm512_srav_epi32(_mm512_sub_epi32(key, base), shift)
+        };
+        std::array::from_fn(|index| {
+            let group = 4 * (index / 2) + index % 2;
+            _mm512_packus_epi32(sixteen(group), sixteen(group + 2))
+        })
+    }
+
+    /// Puts the bits for the 64 lanes of two vectors of [`cells_of`] into the order of the lanes.
+    #[inline]
+    #[target_feature(enable = "bmi2")]
+    fn in_order(first: u32, second: u32) -> u64 {
+        const TURNS: u64 = 0x0f0f_0f0f_0f0f_0f0f;
+        let bits = u64::from(first) | u64::from(second) << 32;
+        _pext_u64(bits, TURNS) | _pext_u64(bits, !TURNS) << 32
+    }
+
+    /// Brackets, and edges, by the cells that values lie in.
+    #[inline]
+    #[target_feature(enable = "avx512f,avx512bw,bmi2,popcnt")]
+    fn by_cell(sieve: &Sieve, on_grid: &Cells, row: &Row, scale: f64, kept: &mut Kept) {
+        let cells = cells_of(row, scale, on_grid.grid);
+        let mut any = [0; LANES / 32];
+        let totals = kept.from_bracket.iter_mut().zip(&mut kept.in_bracket);
+        for (&(first, last), (from_bracket, in_bracket)) in on_grid.brackets.iter().zip(totals) {
+            let first = _mm512_set1_epi16(first.cast_signed());
+            let last = _mm512_set1_epi16(last.cast_signed());
+            let (mut from, mut held) = (0, 0);
+            for (&cell, any) in cells.iter().zip(&mut any) {
+                let at_least = _mm512_cmpge_epu16_mask(cell, first);
+                let within = _mm512_mask_cmple_epu16_mask(at_least, cell, last);
+                from += u64::from(at_least.count_ones());
+                held += u64::from(within.count_ones());
+                *any |= within;
             }
-            // SAFETY: at most LANES values are kept in all, and a store writes at most 8 past the last: the caller made that
-            // room.
-            unsafe {
-                _mm512_storeu_pd(start.add(end), _mm512_maskz_compress_pd(any as u8, low));
-                end += (any as u8).count_ones() as usize;
-                _mm512_storeu_pd(start.add(end), _mm512_maskz_compress_pd((any >> 8) as u8, high));
-                end += (any >> 8).count_ones() as usize;
+            *from_bracket += from;
+            *in_bracket += held;
+        }
+        for ((&edge, &whole), total) in on_grid.edges.iter().zip(&sieve.edges).zip(&mut kept.from_edge) {
+            *total += match edge {
+                Edge::Within(cell) if holds(&cells, cell) => one_edge(whole, row, scale),
+                Edge::Within(cell) | Edge::At(cell) => from_cell(&cells, cell),
+                Edge::Below => LANES as u64,
+                Edge::Beyond => 0,
+            };
+        }
+        if !on_grid.brackets.is_empty() {
+            let bits = std::array::from_fn(|index| in_order(any[2 * index], any[2 * index + 1]));
+            keep(&bits, row, scale, &mut kept.values);
+        }
+    }
+
+    /// How many lanes lie in `cell` or above.
+    #[inline]
+    #[target_feature(enable = "avx512f,avx512bw,popcnt")]
+    fn from_cell(cells: &[__m512i; LANES / 32], cell: u16) -> u64 {
+        let first = _mm512_set1_epi16(cell.cast_signed());
+        cells.iter().map(|&cells| u64::from(_mm512_cmpge_epu16_mask(cells, first).count_ones())).sum()
+    }
+
+    /// Whether any lane lies in `cell`.
+    #[inline]
+    #[target_feature(enable = "avx512f,avx512bw")]
+    fn holds(cells: &[__m512i; LANES / 32], cell: u16) -> bool {
+        let one = _mm512_set1_epi16(cell.cast_signed());
+        cells.iter().fold(u32::MAX, |none, &cells| _mm512_mask_cmpneq_epu16_mask(none, cells, one)) != u32::MAX
+    }
+
+    /// Values copied at a time without looking whether there are as many.
+    const BATCH: usize = 8;
+
+    /// Appends the lanes whose bits are set, in order, times `scale`.
+    #[inline]
+    fn keep(bits: &[u64; LANES / 64], row: &Row, scale: f64, values: &mut Vec<f64>) {
+        let mut lanes = [0; LANES + 64];
+        let count = if is_x86_feature_detected!("avx512vbmi2") {
+            // SAFETY: the processor has this and, like all that do, the others.
+            unsafe { list(bits, &mut lanes) }
+        } else {
+            super::plain::list(bits, &mut lanes)
+        };
+        let (room, _) = values.spare_capacity_mut()[..ROOM].as_chunks_mut::<BATCH>();
+        for (room, lanes) in room[..count.div_ceil(BATCH)].iter_mut().zip(lanes.as_chunks::<BATCH>().0) {
+            for (place, &lane) in room.iter_mut().zip(lanes) {
+                place.write(row.0[usize::from(lane)] * scale);
             }
         }
-        // SAFETY: the values up to `end` were just written, within the capacity.
-        unsafe { kept.values.set_len(end) };
-        for bracket in 0..N {
-            kept.from_bracket[bracket] += u64::from(from[bracket]);
-            kept.in_bracket[bracket] += u64::from(held[bracket]);
+        // SAFETY: `count` values, and the rest of a batch, were just written into spare room.
+        unsafe { values.set_len(values.len() + count) };
+    }
+
+    /// Lists the lanes whose bits are set; returns how many there are. Beyond them stand others.
+    #[target_feature(enable = "avx512f,avx512bw,avx512vbmi2,popcnt")]
+    fn list(bits: &[u64; LANES / 64], lanes: &mut [u8; LANES + 64]) -> usize {
+        const FIRST: [u8; 64] = {
+            let mut lanes = [0; 64];
+            let mut lane = 0;
+            while lane < 64 {
+                lanes[lane] = lane as u8;
+                lane += 1;
+            }
+            lanes
+        };
+        // SAFETY: 64 bytes.
+        let mut all = unsafe { _mm512_loadu_epi8(FIRST.as_ptr().cast()) };
+        let mut count = 0;
+        for &bits in bits {
+            let room = &mut lanes[count..count + 64];
+            // SAFETY: 64 bytes.
+            unsafe { _mm512_storeu_epi8(room.as_mut_ptr().cast(), _mm512_maskz_compress_epi8(bits, all)) };
+            all = _mm512_add_epi8(all, _mm512_set1_epi8(64));
+            count += bits.count_ones() as usize;
         }
+        count
     }
 
     /// Any number of brackets, by whole values.
@@ -336,15 +525,14 @@ mod avx512 {
     /// # Safety
     /// `kept.values` must have room for [`ROOM`] more.
     #[target_feature(enable = "avx512f,popcnt")]
-    unsafe fn whole(count: usize, brackets: &[(f64, f64)], row: &Row, scale: f64, kept: &mut Kept) {
+    unsafe fn whole(brackets: &[(f64, f64)], row: &Row, scale: f64, kept: &mut Kept) {
         debug_assert!(kept.values.capacity() - kept.values.len() >= ROOM);
         let scale = _mm512_set1_pd(scale);
         let mut end = kept.values.len();
         for index in 0..LANES / 8 {
             let scaled = _mm512_mul_pd(value(row, index), scale);
             let mut any = 0;
-            for bracket in 0..count {
-                let (low, high) = brackets[bracket];
+            for (bracket, &(low, high)) in brackets.iter().enumerate() {
                 // Nothing is at or above what is not a number.
                 let high = if high == f64::INFINITY { f64::NAN } else { high };
                 let at_least = _mm512_cmp_pd_mask::<_CMP_GE_OQ>(scaled, _mm512_set1_pd(low));
@@ -353,7 +541,7 @@ mod avx512 {
                 kept.in_bracket[bracket] += u64::from(within.count_ones());
                 any |= within;
             }
-            // SAFETY: as in `by_key`.
+            // SAFETY: at most LANES values are kept in all, and a store writes at most 8 past the last: the caller made that room.
             unsafe { _mm512_storeu_pd(kept.values.as_mut_ptr().add(end), _mm512_maskz_compress_pd(any, scaled)) };
             end += any.count_ones() as usize;
         }
@@ -361,44 +549,10 @@ mod avx512 {
         unsafe { kept.values.set_len(end) };
     }
 
-    /// Counts at or above each edge. Values and edges of +0 and above are ordered by their upper halves, unless these are equal:
-    /// rare, and then the whole values decide.
     #[inline]
     #[target_feature(enable = "avx512f,popcnt")]
-    fn edges(sieve: &Sieve, row: &Row, scale: f64, totals: &mut [u64]) {
-        let scale = _mm512_set1_pd(scale);
-        let odd = _mm512_setr_epi32(1, 3, 5, 7, 9, 11, 13, 15, 17, 19, 21, 23, 25, 27, 29, 31);
-        if let ([low, beyond], [below, above]) = (sieve.edges.as_slice(), &mut *totals)
-            && sieve.keys.is_some()
-            && low.is_sign_positive()
-            && beyond.is_sign_positive()
-        {
-            let keys = [upper(*low), upper(*beyond)].map(|key| _mm512_set1_epi32(key.cast_signed()));
-            let (mut counts, mut equal) = ([0u32; 2], 0);
-            for index in 0..LANES / 16 {
-                let first = _mm512_mul_pd(value(row, 2 * index), scale);
-                let second = _mm512_mul_pd(value(row, 2 * index + 1), scale);
-                let key = _mm512_permutex2var_epi32(_mm512_castpd_si512(first), odd, _mm512_castpd_si512(second));
-                for edge in 0..2 {
-                    counts[edge] += u32::from(_mm512_cmpge_epu32_mask(key, keys[edge])).count_ones();
-                    equal |= _mm512_cmpeq_epu32_mask(key, keys[edge]);
-                }
-            }
-            if equal == 0 {
-                *below += u64::from(counts[0]);
-                *above += u64::from(counts[1]);
-                return;
-            }
-        }
-        for (&edge, total) in sieve.edges.iter().zip(totals) {
-            *total += one_edge(edge, row, scale);
-        }
-    }
-
-    #[inline]
-    #[target_feature(enable = "avx512f,popcnt")]
-    fn one_edge(edge: f64, row: &Row, scale: __m512d) -> u64 {
-        let edge = _mm512_set1_pd(edge);
+    fn one_edge(edge: f64, row: &Row, scale: f64) -> u64 {
+        let (edge, scale) = (_mm512_set1_pd(edge), _mm512_set1_pd(scale));
         let mut count = 0;
         for index in 0..LANES / 8 {
             let scaled = _mm512_mul_pd(value(row, index), scale);
@@ -427,18 +581,87 @@ mod tests {
         row
     }
 
+    fn agree(sieve: &Sieve, row: &Row, scale: f64) {
+        for count in [LANES, 0, 1, 7, 255] {
+            let (mut fast, mut plain) = (sieve.nothing(0), sieve.nothing(0));
+            for _ in 0..2 {
+                sieve.sift(row, scale, count, &mut fast);
+                sieve.sift_plain(row, scale, count, &mut plain);
+            }
+            assert_eq!(fast, plain, "{count} lanes through {sieve:?}");
+        }
+    }
+
     #[test]
     fn the_kernel_and_its_twin_agree() {
-        let sieve =
-            Sieve::wide(&[(0.1, 0.5), (1.0, 1.0 + 1e-9), (2.0, f64::INFINITY)], &[0.0, 2.0, 2.0f64.next_up(), 3.3]);
-        for seed in 0..200 {
-            for count in [LANES, 0, 1, 7, 255] {
-                let row = row(seed);
-                let (mut fast, mut plain) = (sieve.nothing(0), sieve.nothing(0));
-                sieve.sift(&row, 1.25, count, &mut fast);
-                sieve.sift_plain(&row, 1.25, count, &mut plain);
-                assert_eq!(fast, plain, "seed {seed}, {count} lanes");
+        const OPEN: f64 = f64::INFINITY;
+        let brackets: [&[(f64, f64)]; 7] = [
+            &[(0.1, 0.5), (1.0, 1.0 + 1e-9), (2.0, OPEN)],
+            &[(0.0, OPEN)],
+            &[(0.0, 0.3), (2.0, 2.0), (2.1, 2.5)],
+            &[(0.0, 0.0), (1e-300, 1e-9), (1.0, 2.0)],
+            &[(0.3, 0.31), (0.5, 0.51), (0.7, 0.71), (0.9, 0.91), (1.1, 1.11), (1.3, 1.31), (1.5, 3.0), (4.0, 5.0)],
+            &[(1.9, 1.99), (1.991, 2.0), (2.00001, 2.1)],
+            &[],
+        ];
+        let edges: [&[f64]; 6] = [
+            &[],
+            &[2.0, 2.0f64.next_up()],
+            &[2.5, 2.5f64.next_down(), 3.3],
+            &[f64::NEG_INFINITY, f64::NAN],
+            &[0.0, -0.0, -1.0, 1e-200, OPEN],
+            &[1e-310, 1e300],
+        ];
+        for brackets in brackets {
+            for edges in edges {
+                let sieve = Sieve::wide(brackets, edges);
+                for seed in 0..20 {
+                    let mut row = row(seed);
+                    agree(&sieve, &row, 1.25);
+                    row.0[(11 * seed) as usize] = OPEN;
+                    row.0[(11 * seed + 1) as usize] = f64::MAX;
+                    agree(&sieve, &row, 1.0);
+                }
             }
+        }
+    }
+
+    #[test]
+    fn rows_of_one_number_and_its_neighbours() {
+        let sieve = Sieve::wide(&[(1.0, 1.5), (1.7, 2.0), (2.5, 3.0)], &[1.7, 1.7f64.next_up(), 2.0, 2.0f64.next_up()]);
+        let ends = sieve.brackets().iter().flat_map(|&(low, high)| [low, high]).chain([1.7, 2.0]);
+        for end in ends {
+            for value in [end.next_down(), end, end.next_up()] {
+                let mut row = Row::ZERO;
+                row.0[..200].fill(value);
+                agree(&sieve, &row, 1.0);
+            }
+        }
+    }
+
+    #[test]
+    fn brackets_become_a_little_wider_and_join() {
+        let given = [(0.0, 0.1), (0.4, 0.5), (0.5, 0.7), (1.0, f64::INFINITY)];
+        let expected = [(0.0, 0.1), (0.4, 0.7), (1.0, f64::INFINITY)];
+        for edges in [&[] as &[f64], &[0.25, 40.0], &[1e-30, 1e30]] {
+            let sieve = Sieve::wide(&given, edges);
+            assert_eq!(sieve.brackets().len(), expected.len());
+            for (&(low, high), (least, most)) in sieve.brackets().iter().zip(expected) {
+                assert!(low <= least && low >= least * (1.0 - 2.5e-4), "{low} for {least}");
+                assert!(high >= most && high <= most * (1.0 + 2.5e-4), "{high} for {most}");
+            }
+        }
+    }
+
+    #[cfg(target_arch = "x86_64")]
+    #[test]
+    fn lanes_are_listed_in_order() {
+        for bits in [[0; 4], [u64::MAX; 4], [1, 0, 1 << 63, 0x8001_0000_f00f_0000]] {
+            let mut lanes = [0; LANES + 64];
+            let count = plain::list(&bits, &mut lanes);
+            let expected: Vec<u8> =
+                (0..=255u8).filter(|&lane| bits[usize::from(lane / 64)] >> (lane % 64) & 1 == 1).collect();
+            assert_eq!(lanes[..count], expected);
         }
     }
 
