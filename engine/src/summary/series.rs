@@ -2,7 +2,7 @@
 
 use crate::math::{Kept, Sieve};
 
-use super::select::{Bracket, Scratch, select};
+use super::select::{Scratch, Span, Wanted, select};
 
 /// Edges of a window: shares are counts at or above them.
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -99,22 +99,20 @@ impl Search {
         // Everything that is known, in rising order: a value and how many values lie below it.
         let mut known: Vec<(f64, u64)> = Vec::new();
         let lists: Vec<&[f64]> = kept.iter().map(|kept| kept.values.as_slice()).collect();
-        let brackets = self.sieve.brackets();
-        let held = |index: usize| kept.iter().map(|kept| kept.in_bracket[index]).sum::<u64>();
-        for (index, &(low, high)) in brackets.iter().enumerate() {
+        let (mut spans, mut wanted, mut start) = (Vec::new(), Vec::new(), 0);
+        for (index, &(low, high)) in self.sieve.brackets().iter().enumerate() {
             let below = patients - kept.iter().map(|kept| kept.from_bracket[index]).sum::<u64>();
-            let inside = held(index);
+            let inside = kept.iter().map(|kept| kept.in_bracket[index]).sum::<u64>();
             let above = below + inside;
-            let start = ranks.partition_point(|&rank| rank < below);
-            let end = ranks.partition_point(|&rank| rank < above);
-            let wanted: Vec<usize> = ranks[start..end].iter().map(|&rank| (rank - below) as usize).collect();
+            let places = ranks.partition_point(|&rank| rank < below)..ranks.partition_point(|&rank| rank < above);
+            wanted.extend(places.map(|place| Wanted { position: start + (ranks[place] - below) as usize, place }));
+            spans.push(Span { low, high, start, inside: inside as usize });
             // Values are kept within brackets only, which rise.
-            let from = (index..brackets.len()).map(held).sum::<u64>();
-            let bracket = Bracket { low, high, inside: inside as usize, from: from as usize };
-            select(&lists, bracket, &wanted, scratch, &mut |place, value| found[start + place] = Found::Value(value));
+            start += inside as usize;
             known.push((low, below));
             known.push((high, above));
         }
+        select(&lists, &self.sieve, &spans, &wanted, scratch, &mut |place, value| found[place] = Found::Value(value));
         let offset = if self.window { 2 } else { 0 };
         for (index, &value) in self.points.iter().enumerate() {
             let from = |edge: usize| kept.iter().map(|kept| kept.from_edge[edge]).sum::<u64>();

@@ -179,8 +179,40 @@ impl Sieve {
         }
     }
 
+    /// A sieve of the same kind with other brackets, and no edges.
+    #[must_use]
+    pub fn like(&self, brackets: &[(f64, f64)]) -> Self {
+        if self.keys.is_some() { Self::wide(brackets, &[]) } else { Self::exact(brackets, &[]) }
+    }
+
+    /// Empties `kept` for this sieve.
+    pub fn empty(&self, kept: &mut Kept) {
+        for counts in [&mut kept.from_bracket, &mut kept.in_bracket] {
+            counts.clear();
+            counts.resize(self.brackets.len(), 0);
+        }
+        kept.from_edge.clear();
+        kept.from_edge.resize(self.edges.len(), 0);
+        kept.values.clear();
+    }
+
+    /// Sifts a list.
+    pub fn sift_list(&self, values: &[f64], kept: &mut Kept) {
+        let (rows, rest) = values.as_chunks();
+        for row in rows {
+            self.sift_lanes(row, 1.0, LANES, kept);
+        }
+        let mut last = [0.0; LANES];
+        last[..rest.len()].copy_from_slice(rest);
+        self.sift_lanes(&last, 1.0, rest.len(), kept);
+    }
+
     /// Sifts the first `count` lanes of `row`, each times `scale`.
     pub fn sift(&self, row: &Row, scale: f64, count: usize, kept: &mut Kept) {
+        self.sift_lanes(&row.0, scale, count, kept);
+    }
+
+    fn sift_lanes(&self, row: &[f64; LANES], scale: f64, count: usize, kept: &mut Kept) {
         let length = kept.values.len();
         if !self.brackets.is_empty() && kept.values.capacity() < length + ROOM {
             // A quarter more at a time: what a pass keeps is bounded by a budget.
@@ -195,11 +227,15 @@ impl Sieve {
             }
             return;
         }
-        self.sift_plain(row, scale, count, kept);
+        self.sift_lanes_plain(row, scale, count, kept);
     }
 
     /// The plain twin of the kernel.
     pub fn sift_plain(&self, row: &Row, scale: f64, count: usize, kept: &mut Kept) {
+        self.sift_lanes_plain(&row.0, scale, count, kept);
+    }
+
+    fn sift_lanes_plain(&self, row: &[f64; LANES], scale: f64, count: usize, kept: &mut Kept) {
         let mut values = *row;
         plain::scale(&mut values, scale);
         let mut within = [0u32; LANES];
@@ -248,18 +284,18 @@ fn merged(brackets: impl Iterator<Item = (u32, u32)>) -> Vec<(u32, u32)> {
 mod plain {
     use multiversion::multiversion;
 
-    use crate::math::{LANES, Row};
+    use crate::math::LANES;
 
     #[multiversion(targets("x86_64+avx2"))]
-    pub(super) fn scale(values: &mut Row, scale: f64) {
-        for value in &mut values.0 {
+    pub(super) fn scale(values: &mut [f64; LANES], scale: f64) {
+        for value in values {
             *value *= scale;
         }
     }
 
     #[multiversion(targets("x86_64+avx2"))]
-    pub(super) fn keys(values: &Row, keys: &mut [u32; LANES]) {
-        for (key, value) in keys.iter_mut().zip(&values.0) {
+    pub(super) fn keys(values: &[f64; LANES], keys: &mut [u32; LANES]) {
+        for (key, value) in keys.iter_mut().zip(values) {
             *key = (value.to_bits() >> 32) as u32;
         }
     }
@@ -285,7 +321,7 @@ mod plain {
 
     #[multiversion(targets("x86_64+avx2"))]
     pub(super) fn bracket_exact(
-        values: &Row,
+        values: &[f64; LANES],
         low: f64,
         high: f64,
         count: usize,
@@ -293,7 +329,7 @@ mod plain {
     ) -> (u32, u32) {
         let (mut total, mut held) = (0, 0);
         let open = u32::from(high == f64::INFINITY);
-        for (value, within) in values.0[..count].iter().zip(&mut within[..count]) {
+        for (value, within) in values[..count].iter().zip(&mut within[..count]) {
             let from = u32::from(*value >= low);
             let inside = from & (u32::from(*value < high) | open);
             total += from;
@@ -319,9 +355,9 @@ mod plain {
     }
 
     #[multiversion(targets("x86_64+avx2"))]
-    pub(super) fn edge(values: &Row, edge: f64, count: usize) -> u32 {
+    pub(super) fn edge(values: &[f64; LANES], edge: f64, count: usize) -> u32 {
         let mut total = 0;
-        for value in &values.0[..count] {
+        for value in &values[..count] {
             total += u32::from(*value >= edge);
         }
         total
@@ -336,15 +372,16 @@ mod plain {
 mod avx512 {
     use std::arch::x86_64::{
         __m512d, __m512i, _CMP_GE_OQ, _CMP_NGE_UQ, _MM_HINT_ET0, _mm_prefetch, _mm512_add_epi8, _mm512_castpd_si512,
-        _mm512_cmp_pd_mask, _mm512_cmpge_epu16_mask, _mm512_load_pd, _mm512_loadu_epi8, _mm512_mask_cmp_pd_mask,
+        _mm512_cmp_pd_mask, _mm512_cmpge_epu16_mask, _mm512_loadu_epi8, _mm512_loadu_pd, _mm512_mask_cmp_pd_mask,
         _mm512_mask_cmple_epu16_mask, _mm512_mask_cmpneq_epu16_mask, _mm512_maskz_compress_epi8,
         _mm512_maskz_compress_pd, _mm512_mul_pd, _mm512_packus_epi32, _mm512_permutex2var_epi32, _mm512_set1_epi8,
         _mm512_set1_epi16, _mm512_set1_epi32, _mm512_set1_pd, _mm512_setr_epi32, _mm512_srav_epi32, _mm512_storeu_epi8,
         _mm512_storeu_pd, _mm512_sub_epi32, _pext_u64,
     };
+    use std::hint::black_box;
 
     use super::{Cells, Edge, Grid, Kept, ROOM, Sieve};
-    use crate::math::{LANES, Row};
+    use crate::math::LANES;
 
     /// Lines that a block's kept values usually fill.
     const LINES: usize = 4;
@@ -368,7 +405,7 @@ mod avx512 {
     /// # Safety
     /// The processor must be [`available`]; `kept.values` must have room for [`ROOM`] more if there are brackets.
     #[target_feature(enable = "avx512f,avx512bw,bmi2,popcnt")]
-    pub(super) unsafe fn sift(sieve: &Sieve, row: &Row, scale: f64, kept: &mut Kept) {
+    pub(super) unsafe fn sift(sieve: &Sieve, row: &[f64; LANES], scale: f64, kept: &mut Kept) {
         if let Some(cells) = &sieve.cells {
             by_cell(sieve, cells, row, scale, kept);
             if cells.edges.len() == sieve.edges.len() {
@@ -386,20 +423,22 @@ mod avx512 {
     /// Vector `index` of a row.
     #[inline]
     #[target_feature(enable = "avx512f")]
-    fn value(row: &Row, index: usize) -> __m512d {
+    fn value(row: &[f64; LANES], index: usize) -> __m512d {
         assert!(index < LANES / 8);
-        // SAFETY: a row is 64-byte aligned and holds LANES / 8 vectors of eight.
-        unsafe { _mm512_load_pd(row.0.as_ptr().add(8 * index)) }
+        // SAFETY: a row holds LANES / 8 vectors of eight.
+        unsafe { _mm512_loadu_pd(row.as_ptr().add(8 * index)) }
     }
 
     /// The cells of a row, 32 lanes a vector: in vector `2 q` sixteen of them from lane `64 q`, taken in turns of four with
     /// sixteen from lane `64 q + 32`; in the next vector those that follow either.
     #[inline]
     #[target_feature(enable = "avx512f,avx512bw")]
-    fn cells_of(row: &Row, scale: f64, grid: Grid) -> [__m512i; LANES / 32] {
+    fn cells_of(row: &[f64; LANES], scale: f64, grid: Grid) -> [__m512i; LANES / 32] {
         let scale = _mm512_set1_pd(scale);
         let odd = _mm512_setr_epi32(1, 3, 5, 7, 9, 11, 13, 15, 17, 19, 21, 23, 25, 27, 29, 31);
-        let (base, shift) = (_mm512_set1_epi32(grid.base), _mm512_set1_epi32(grid.shift.cast_signed()));
+        let base = _mm512_set1_epi32(grid.base);
+        // Known to be the same in all lanes, it would become a shift by one register: two steps on a processor, not one.
+        let shift = black_box(_mm512_set1_epi32(grid.shift.cast_signed()));
         let sixteen = |group: usize| {
             let low = _mm512_mul_pd(value(row, 2 * group), scale);
             let high = _mm512_mul_pd(value(row, 2 * group + 1), scale);
@@ -424,7 +463,7 @@ mod avx512 {
     /// Brackets, and edges, by the cells that values lie in.
     #[inline]
     #[target_feature(enable = "avx512f,avx512bw,bmi2,popcnt")]
-    fn by_cell(sieve: &Sieve, on_grid: &Cells, row: &Row, scale: f64, kept: &mut Kept) {
+    fn by_cell(sieve: &Sieve, on_grid: &Cells, row: &[f64; LANES], scale: f64, kept: &mut Kept) {
         let cells = cells_of(row, scale, on_grid.grid);
         let mut any = [0; LANES / 32];
         let totals = kept.from_bracket.iter_mut().zip(&mut kept.in_bracket);
@@ -477,7 +516,7 @@ mod avx512 {
 
     /// Appends the lanes whose bits are set, in order, times `scale`.
     #[inline]
-    fn keep(bits: &[u64; LANES / 64], row: &Row, scale: f64, values: &mut Vec<f64>) {
+    fn keep(bits: &[u64; LANES / 64], row: &[f64; LANES], scale: f64, values: &mut Vec<f64>) {
         let mut lanes = [0; LANES + 64];
         let count = if is_x86_feature_detected!("avx512vbmi2") {
             // SAFETY: the processor has this and, like all that do, the others.
@@ -488,7 +527,7 @@ mod avx512 {
         let (room, _) = values.spare_capacity_mut()[..ROOM].as_chunks_mut::<BATCH>();
         for (room, lanes) in room[..count.div_ceil(BATCH)].iter_mut().zip(lanes.as_chunks::<BATCH>().0) {
             for (place, &lane) in room.iter_mut().zip(lanes) {
-                place.write(row.0[usize::from(lane)] * scale);
+                place.write(row[usize::from(lane)] * scale);
             }
         }
         // SAFETY: `count` values, and the rest of a batch, were just written into spare room.
@@ -525,7 +564,7 @@ mod avx512 {
     /// # Safety
     /// `kept.values` must have room for [`ROOM`] more.
     #[target_feature(enable = "avx512f,popcnt")]
-    unsafe fn whole(brackets: &[(f64, f64)], row: &Row, scale: f64, kept: &mut Kept) {
+    unsafe fn whole(brackets: &[(f64, f64)], row: &[f64; LANES], scale: f64, kept: &mut Kept) {
         debug_assert!(kept.values.capacity() - kept.values.len() >= ROOM);
         let scale = _mm512_set1_pd(scale);
         let mut end = kept.values.len();
@@ -551,7 +590,7 @@ mod avx512 {
 
     #[inline]
     #[target_feature(enable = "avx512f,popcnt")]
-    fn one_edge(edge: f64, row: &Row, scale: f64) -> u64 {
+    fn one_edge(edge: f64, row: &[f64; LANES], scale: f64) -> u64 {
         let (edge, scale) = (_mm512_set1_pd(edge), _mm512_set1_pd(scale));
         let mut count = 0;
         for index in 0..LANES / 8 {
@@ -621,6 +660,27 @@ mod tests {
                     row.0[(11 * seed) as usize] = OPEN;
                     row.0[(11 * seed + 1) as usize] = f64::MAX;
                     agree(&sieve, &row, 1.0);
+                }
+            }
+        }
+    }
+
+    #[test]
+    fn a_list_is_sifted_like_its_rows() {
+        let values: Vec<f64> = (0..5).flat_map(|seed| row(seed).0).collect();
+        for sieve in [Sieve::wide(&[(0.1, 0.5), (1.0, 2.1)], &[]), Sieve::exact(&[(-0.5, 0.1), (1.0, 1.5)], &[])] {
+            for part in [&values[..0], &values[1..8], &values[3..259], &values[..512], &values[5..]] {
+                let mut kept = sieve.nothing(0);
+                sieve.sift_list(&values, &mut kept);
+                sieve.empty(&mut kept);
+                sieve.sift_list(part, &mut kept);
+                let within = |value: f64| sieve.brackets().iter().any(|&(low, high)| value >= low && value < high);
+                assert_eq!(kept.values, part.iter().copied().filter(|&value| within(value)).collect::<Vec<_>>());
+                for (&(low, high), (from, inside)) in
+                    sieve.brackets().iter().zip(kept.from_bracket.iter().zip(&kept.in_bracket))
+                {
+                    assert_eq!(*from, part.iter().filter(|&&value| value >= low).count() as u64);
+                    assert_eq!(*inside, part.iter().filter(|&&value| value >= low && value < high).count() as u64);
                 }
             }
         }
