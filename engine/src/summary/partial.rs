@@ -16,14 +16,7 @@ pub struct Moments {
 impl Moments {
     /// Adds the first `count` lanes. Inside a block the sum has a fixed order; blocks are added exactly, in any order.
     pub fn absorb(&mut self, row: &Row, centre: f64, count: usize) {
-        let (mut sums, mut squares) = ([0.0; 8], [0.0; 8]);
-        for chunk in row[..count].chunks(8) {
-            for (lane, value) in chunk.iter().enumerate() {
-                let difference = value - centre;
-                sums[lane] += difference;
-                squares[lane] += difference * difference;
-            }
-        }
+        let (sums, squares) = sums(&row.0[..count], centre);
         self.sum.add(sums.iter().sum());
         self.squares.add(squares.iter().sum());
     }
@@ -136,4 +129,25 @@ fn add(mine: &mut [u64], theirs: &[u64]) {
     for (mine, theirs) in mine.iter_mut().zip(theirs) {
         *mine += theirs;
     }
+}
+
+/// Sums of the differences from a centre and of their squares, of every eighth value: the order is fixed, whatever the vectors.
+#[multiversion::multiversion(targets("x86_64+avx512f+avx512bw+avx512dq+avx512vl", "x86_64+avx2"))]
+fn sums(values: &[f64], centre: f64) -> ([f64; 8], [f64; 8]) {
+    let (mut sums, mut squares) = ([0.0; 8], [0.0; 8]);
+    let mut add = |lane: usize, value: f64| {
+        let difference = value - centre;
+        sums[lane] += difference;
+        squares[lane] += difference * difference;
+    };
+    let (chunks, rest) = values.as_chunks::<8>();
+    for chunk in chunks {
+        for (lane, &value) in chunk.iter().enumerate() {
+            add(lane, value);
+        }
+    }
+    for (lane, &value) in rest.iter().enumerate() {
+        add(lane, value);
+    }
+    (sums, squares)
 }

@@ -372,11 +372,12 @@ mod plain {
 mod avx512 {
     use std::arch::x86_64::{
         __m512d, __m512i, _CMP_GE_OQ, _CMP_NGE_UQ, _MM_HINT_ET0, _mm_prefetch, _mm512_add_epi8, _mm512_castpd_si512,
-        _mm512_cmp_pd_mask, _mm512_cmpge_epu16_mask, _mm512_loadu_epi8, _mm512_loadu_pd, _mm512_mask_cmp_pd_mask,
-        _mm512_mask_cmple_epu16_mask, _mm512_mask_cmpneq_epu16_mask, _mm512_maskz_compress_epi8,
-        _mm512_maskz_compress_pd, _mm512_mul_pd, _mm512_packus_epi32, _mm512_permutex2var_epi32, _mm512_set1_epi8,
-        _mm512_set1_epi16, _mm512_set1_epi32, _mm512_set1_pd, _mm512_setr_epi32, _mm512_srav_epi32, _mm512_storeu_epi8,
-        _mm512_storeu_pd, _mm512_sub_epi32, _pext_u64,
+        _mm512_cmp_pd_mask, _mm512_cmpge_epu16_mask, _mm512_loadu_epi8, _mm512_loadu_pd, _mm512_mask_add_epi64,
+        _mm512_mask_cmp_pd_mask, _mm512_mask_cmple_epu16_mask, _mm512_mask_cmpneq_epu16_mask,
+        _mm512_maskz_compress_epi8, _mm512_mul_pd, _mm512_packus_epi32, _mm512_permutex2var_epi32,
+        _mm512_reduce_add_epi64, _mm512_set1_epi8, _mm512_set1_epi16, _mm512_set1_epi32, _mm512_set1_epi64,
+        _mm512_set1_pd, _mm512_setr_epi32, _mm512_setzero_si512, _mm512_srav_epi32, _mm512_storeu_epi8,
+        _mm512_sub_epi32, _pext_u64,
     };
     use std::hint::black_box;
 
@@ -412,8 +413,7 @@ mod avx512 {
                 return;
             }
         } else if !sieve.brackets.is_empty() {
-            // SAFETY: as above.
-            unsafe { whole(&sieve.brackets, row, scale, kept) };
+            whole(&sieve.brackets, row, scale, kept);
         }
         for (&edge, total) in sieve.edges.iter().zip(&mut kept.from_edge) {
             *total += one_edge(edge, row, scale);
@@ -559,33 +559,30 @@ mod avx512 {
         count
     }
 
-    /// Any number of brackets, by whole values.
-    ///
-    /// # Safety
-    /// `kept.values` must have room for [`ROOM`] more.
-    #[target_feature(enable = "avx512f,popcnt")]
-    unsafe fn whole(brackets: &[(f64, f64)], row: &[f64; LANES], scale: f64, kept: &mut Kept) {
-        debug_assert!(kept.values.capacity() - kept.values.len() >= ROOM);
-        let scale = _mm512_set1_pd(scale);
-        let mut end = kept.values.len();
-        for index in 0..LANES / 8 {
-            let scaled = _mm512_mul_pd(value(row, index), scale);
-            let mut any = 0;
-            for (bracket, &(low, high)) in brackets.iter().enumerate() {
-                // Nothing is at or above what is not a number.
-                let high = if high == f64::INFINITY { f64::NAN } else { high };
-                let at_least = _mm512_cmp_pd_mask::<_CMP_GE_OQ>(scaled, _mm512_set1_pd(low));
-                let within = _mm512_mask_cmp_pd_mask::<_CMP_NGE_UQ>(at_least, scaled, _mm512_set1_pd(high));
-                kept.from_bracket[bracket] += u64::from(at_least.count_ones());
-                kept.in_bracket[bracket] += u64::from(within.count_ones());
-                any |= within;
+    /// Brackets by whole values.
+    #[target_feature(enable = "avx512f,avx512bw,popcnt")]
+    fn whole(brackets: &[(f64, f64)], row: &[f64; LANES], scale: f64, kept: &mut Kept) {
+        let mut any = [0; LANES / 8];
+        let one = _mm512_set1_epi64(1);
+        let totals = kept.from_bracket.iter_mut().zip(&mut kept.in_bracket);
+        for (&(low, high), (from_bracket, in_bracket)) in brackets.iter().zip(totals) {
+            // Nothing is at or above what is not a number.
+            let high = if high == f64::INFINITY { f64::NAN } else { high };
+            let (low, high, scale) = (_mm512_set1_pd(low), _mm512_set1_pd(high), _mm512_set1_pd(scale));
+            let (mut from, mut held) = (_mm512_setzero_si512(), _mm512_setzero_si512());
+            for (index, any) in any.iter_mut().enumerate() {
+                let scaled = _mm512_mul_pd(value(row, index), scale);
+                let at_least = _mm512_cmp_pd_mask::<_CMP_GE_OQ>(scaled, low);
+                let within = _mm512_mask_cmp_pd_mask::<_CMP_NGE_UQ>(at_least, scaled, high);
+                from = _mm512_mask_add_epi64(from, at_least, from, one);
+                held = _mm512_mask_add_epi64(held, within, held, one);
+                *any |= within;
             }
-            // SAFETY: at most LANES values are kept in all, and a store writes at most 8 past the last: the caller made that room.
-            unsafe { _mm512_storeu_pd(kept.values.as_mut_ptr().add(end), _mm512_maskz_compress_pd(any, scaled)) };
-            end += any.count_ones() as usize;
+            *from_bracket += _mm512_reduce_add_epi64(from).cast_unsigned();
+            *in_bracket += _mm512_reduce_add_epi64(held).cast_unsigned();
         }
-        // SAFETY: the values up to `end` were just written, within the capacity.
-        unsafe { kept.values.set_len(end) };
+        let any: [u64; LANES / 64] = std::array::from_fn(|index| u64::from_le_bytes(any.as_chunks().0[index]));
+        keep(&any, row, scale, &mut kept.values);
     }
 
     #[inline]
