@@ -15,7 +15,7 @@ mod sum;
 
 pub use exp::{decay, exp, exp_row};
 pub use falling::{convolved2, convolved3, convolved4, exp_and_falling1, falling1, falling2, falling3};
-pub use kernel::{Kept, Sieve, chunk_for, narrow};
+pub use kernel::{Kept, Sieve, chunk_for};
 pub use ln::{ln, ln_row};
 pub use normal::{normal_cdf, normal_quantile, normal_quantile_row, normal_upper_tail};
 pub use row::{LANES, Row};

@@ -1,141 +1,162 @@
-//! Picking several neighbouring order statistics out of unordered values.
+//! Picking several order statistics out of unordered values.
 //!
-//! In the manner of Floyd and Rivest 1975 (Commun ACM 18:165-172; from memory): a small sample says between which two values the
-//! wanted ranks must lie, one pass picks those out, and only they are ordered.
+//! A span of values whose ends and number are known says about where its order statistics lie, as if they were evenly spread. One
+//! pass over all values picks out what lies near those places in every span; what is left is narrowed again, and at last ordered.
+//! In the manner of Floyd and Rivest 1975 (Commun ACM 18:165-172; from memory), with interpolation instead of a sample.
 
-use crate::math::{Kept, Sieve, exp, ln, narrow};
+use crate::math::{Kept, Sieve};
 
-/// Shorter lists are ordered as they are.
-const SMALL: usize = 4096;
+/// So few values are ordered as they are.
+const SMALL: usize = 1024;
 
-/// Standard errors of the sample by which the picked part is widened.
-const WIDTHS: f64 = 3.5;
+/// How often values are narrowed at most.
+const STEPS: usize = 4;
 
-/// Sampled values of fewer than so many say nothing.
-const LEAST_SAMPLE: usize = 32;
+/// Standard deviations of the order statistics of evenly spread values by which a place is widened.
+const WIDTHS: f64 = 4.0;
+
+/// How far a span's distribution may bend away from the straight line, at its middle a quarter of this.
+const BEND: f64 = 0.1;
 
 /// Buffers to be used again.
 #[derive(Debug, Default)]
 pub struct Scratch {
-    sample: Vec<u64>,
-    picked: Vec<f64>,
+    kept: Kept,
+    before: Kept,
     keys: Vec<u64>,
 }
 
-/// The values from `low` up to but not including `high`.
-#[derive(Clone, Debug)]
-pub(super) struct Bracket {
+/// Some values that are next to each other in order: from `low` up to but not including `high`, or to infinity and with it.
+#[derive(Clone, Copy, Debug)]
+pub(super) struct Span {
     pub(super) low: f64,
     pub(super) high: f64,
-    /// How many of them there are.
+    /// How many values lie below, of those there are to pick from.
+    pub(super) start: usize,
     pub(super) inside: usize,
-    /// How many values are at or above `low`.
-    pub(super) from: usize,
-    /// Ranks wanted within the bracket, rising, from 0.
-    pub(super) ranks: Vec<usize>,
 }
 
-/// Hands the value of each wanted rank to `found`, with the bracket's index and the rank's place. Outside the brackets, which `sieve`
-/// has, `lists` hold nothing.
+/// The value with so many below it among those there are to pick from.
+#[derive(Clone, Copy, Debug)]
+pub(super) struct Wanted {
+    pub(super) position: usize,
+    /// Index of the answer.
+    pub(super) place: usize,
+}
+
+/// Hands every value of `wanted` (rising, each within one of the rising `spans` of `lists`) to `found` with its place. `kind` is a
+/// sieve for such values.
 pub(super) fn select(
     lists: &[&[f64]],
-    sieve: &Sieve,
-    brackets: &[Bracket],
+    kind: &Sieve,
+    spans: &[Span],
+    wanted: &[Wanted],
     scratch: &mut Scratch,
-    found: &mut impl FnMut(usize, usize, f64),
+    found: &mut impl FnMut(usize, f64),
 ) {
-    let total: usize = lists.iter().map(|values| values.len()).sum();
-    let parts = if total < SMALL { None } else { Parts::new(lists, total, sieve, brackets, scratch) };
-    for (index, bracket) in brackets.iter().enumerate() {
-        if bracket.ranks.is_empty() {
-            continue;
+    if wanted.is_empty() {
+        return;
+    }
+    let mut missed = Vec::new();
+    let sieve = kind.like(&windows(spans, wanted, true));
+    let (mut inner, mut left) = narrow(lists, &sieve, wanted, &mut scratch.kept, &mut missed);
+    for _ in 1..STEPS {
+        if scratch.kept.kept() <= SMALL {
+            break;
         }
-        scratch.picked.clear();
-        let skipped = match &parts {
-            Some(parts) if parts.hold(index, bracket) => {
-                let (low, high) = parts.sieve.brackets()[index];
-                for values in parts.kept.lists() {
-                    narrow(values, low, high, &mut scratch.picked);
-                }
-                parts.skipped(index, bracket)
-            }
-            _ => {
-                for values in lists {
-                    narrow(values, bracket.low, bracket.high, &mut scratch.picked);
-                }
-                0
-            }
-        };
-        scratch.keys.clear();
-        scratch.keys.extend(scratch.picked.iter().map(|&value| order_key(value)));
-        let ranks: Vec<usize> = bracket.ranks.iter().map(|rank| rank - skipped).collect();
-        let mut hand_over = |place, key| found(index, place, from_order_key(key));
-        select_from(&mut scratch.keys, 0, &ranks, 0, &mut hand_over);
+        std::mem::swap(&mut scratch.kept, &mut scratch.before);
+        let sieve = kind.like(&windows(&inner, &left, false));
+        let lists: Vec<&[f64]> = scratch.before.lists().collect();
+        (inner, left) = narrow(&lists, &sieve, &left, &mut scratch.kept, &mut missed);
+    }
+    order(&scratch.kept, &left, &mut scratch.keys, found);
+    // What was not where it was expected is looked for in the whole of its span.
+    missed.sort_unstable();
+    let missed: Vec<Wanted> =
+        wanted.iter().copied().filter(|wanted| missed.binary_search(&wanted.place).is_ok()).collect();
+    for missed in missed.chunk_by(|one, other| span_of(spans, *one) == span_of(spans, *other)) {
+        let Span { low, high, .. } = spans[span_of(spans, missed[0])];
+        let (_, left) = narrow(lists, &kind.like(&[(low, high)]), missed, &mut scratch.kept, &mut Vec::new());
+        order(&scratch.kept, &left, &mut scratch.keys, found);
     }
 }
 
-/// The part of each bracket where its wanted ranks are expected, and the values there.
-struct Parts {
-    sieve: Sieve,
-    kept: Kept,
+fn span_of(spans: &[Span], wanted: Wanted) -> usize {
+    spans.partition_point(|span| span.start <= wanted.position) - 1
 }
 
-impl Parts {
-    /// Picks them; `None` where the sample is too small to say where.
-    fn new(lists: &[&[f64]], total: usize, sieve: &Sieve, brackets: &[Bracket], scratch: &mut Scratch) -> Option<Self> {
-        // The values stand in the order of the patients, who are alike: the first ones are a sample.
-        let mut left = (1.5 * exp(ln(total as f64) * (2.0 / 3.0))) as usize;
-        scratch.sample.clear();
-        for values in lists {
-            let taken = left.min(values.len());
-            scratch.sample.extend(values[..taken].iter().map(|&value| order_key(value)));
-            left -= taken;
+/// Where to look: in one window a span if `joined`, else near every wanted value.
+fn windows(spans: &[Span], wanted: &[Wanted], joined: bool) -> Vec<(f64, f64)> {
+    let mut windows: Vec<(f64, f64)> = Vec::new();
+    for near in wanted.chunk_by(|one, other| joined && span_of(spans, *one) == span_of(spans, *other)) {
+        let span = spans[span_of(spans, near[0])];
+        let (low, high) = span.window(near[0].position, near[near.len() - 1].position);
+        match windows.last_mut() {
+            Some(last) if low <= last.1 => last.1 = last.1.max(high),
+            _ => windows.push((low, high)),
         }
-        // Integers sort faster than values.
-        scratch.sample.sort_unstable();
-        let parts: Option<Vec<(f64, f64)>> = brackets.iter().map(|bracket| bracket.part(&scratch.sample)).collect();
-        let sieve = sieve.with_brackets(&parts?);
-        let mut kept = sieve.nothing(total);
-        for values in lists {
-            sieve.sift_list(values, &mut kept);
+    }
+    windows
+}
+
+impl Span {
+    /// Where the values from position `first` to `last` are expected.
+    fn window(&self, first: usize, last: usize) -> (f64, f64) {
+        let width = self.high - self.low;
+        if !width.is_finite() {
+            return (self.low, self.high);
         }
-        Some(Self { sieve, kept })
-    }
-
-    /// How many of a bracket's values lie below its part.
-    fn skipped(&self, index: usize, bracket: &Bracket) -> usize {
-        bracket.from - self.kept.from_bracket[index] as usize
-    }
-
-    /// Whether a bracket's part holds all wanted ranks.
-    fn hold(&self, index: usize, bracket: &Bracket) -> bool {
-        let skipped = self.skipped(index, bracket);
-        let held = self.kept.in_bracket[index] as usize;
-        bracket.ranks.iter().all(|rank| (skipped..skipped + held).contains(rank))
+        let size = self.inside as f64;
+        let at = |position: usize, side: f64| {
+            let part = (position - self.start) as f64 + 0.5;
+            let spread = part * (1.0 - part / size);
+            part + side * (WIDTHS * spread.sqrt() + BEND * spread + 2.0)
+        };
+        let (from, to) = (at(first, -1.0), at(last, 1.0));
+        let low = if from <= 0.0 { self.low } else { self.low + width * (from / size) };
+        let high = if to >= size { self.high } else { self.low + width * (to / size) };
+        (low, high.max(low))
     }
 }
 
-impl Bracket {
-    /// Where the wanted ranks are expected, by the sorted keys of a sample of the values of all brackets.
-    fn part(&self, sample: &[u64]) -> Option<(f64, f64)> {
-        let (Some(&first), Some(&last)) = (self.ranks.first(), self.ranks.last()) else {
-            return Some((self.low, self.low));
-        };
-        let start = sample.partition_point(|&key| key < order_key(self.low));
-        let end = start + sample[start..].partition_point(|&key| key < order_key(self.high));
-        let sample = &sample[start..end];
-        if sample.len() < LEAST_SAMPLE {
-            return None;
-        }
-        let sampled = sample.len() as f64;
-        let place = |rank: usize, side: f64| {
-            let p = (rank as f64 + 0.5) / self.inside as f64;
-            p * sampled + side * (WIDTHS * (sampled * p * (1.0 - p)).sqrt() + 1.0)
-        };
-        let (from, to) = (place(first, -1.0), place(last, 1.0));
-        let low = if from < 0.0 { self.low } else { from_order_key(sample[from as usize]) };
-        Some((low, sample.get(to as usize).map_or(self.high, |&key| from_order_key(key))))
+/// Keeps what lies in the brackets of `sieve`; returns these as spans and what is wanted within them, both by position among what
+/// was kept. Places of what does not lie there are added to `missed`.
+fn narrow(
+    lists: &[&[f64]],
+    sieve: &Sieve,
+    wanted: &[Wanted],
+    kept: &mut Kept,
+    missed: &mut Vec<usize>,
+) -> (Vec<Span>, Vec<Wanted>) {
+    sieve.empty(kept);
+    for list in lists {
+        sieve.sift_list(list, kept);
     }
+    let total: usize = lists.iter().map(|list| list.len()).sum();
+    let (mut spans, mut left) = (Vec::new(), Vec::new());
+    let mut wanted = wanted.iter().copied().peekable();
+    let mut start = 0;
+    for (index, &(low, high)) in sieve.brackets().iter().enumerate() {
+        let (below, inside) = (total - kept.from_bracket[index] as usize, kept.in_bracket[index] as usize);
+        while let Some(before) = wanted.next_if(|wanted| wanted.position < below) {
+            missed.push(before.place);
+        }
+        while let Some(within) = wanted.next_if(|wanted| wanted.position < below + inside) {
+            left.push(Wanted { position: within.position - below + start, ..within });
+        }
+        spans.push(Span { low, high, start, inside });
+        start += inside;
+    }
+    missed.extend(wanted.map(|after| after.place));
+    (spans, left)
+}
+
+/// Orders as much of `values` as is needed.
+fn order(values: &Kept, wanted: &[Wanted], keys: &mut Vec<u64>, found: &mut impl FnMut(usize, f64)) {
+    keys.clear();
+    keys.extend(values.lists().flatten().map(|&value| order_key(value)));
+    let positions: Vec<usize> = wanted.iter().map(|wanted| wanted.position).collect();
+    select_from(keys, 0, &positions, 0, &mut |index, key| found(wanted[index].place, from_order_key(key)));
 }
 
 /// Maps a value to an integer that orders as the value does (negative zero below zero).
@@ -186,37 +207,54 @@ mod tests {
             .collect()
     }
 
+    /// Selects some positions of `all`, of which only what lies within `brackets` is there to pick from.
+    fn check(all: &[f64], brackets: &[(f64, f64)], kind: &Sieve) {
+        let within =
+            |value: f64| brackets.iter().any(|&(low, high)| value >= low && (value < high || high.is_infinite()));
+        let listed: Vec<f64> = all.iter().copied().filter(|&value| within(value)).collect();
+        let mut sorted = listed.clone();
+        sorted.sort_by(f64::total_cmp);
+        let position = |value: f64| sorted.partition_point(|&other| other < value);
+        let spans: Vec<Span> = brackets
+            .iter()
+            .map(|&(low, high)| {
+                let start = position(low);
+                let end = if high.is_infinite() { sorted.len() } else { position(high) };
+                Span { low, high, start, inside: end - start }
+            })
+            .collect();
+        let mut positions: Vec<usize> = Vec::new();
+        for span in &spans {
+            let picks = [0, 0, 1, span.inside / 3, span.inside / 3 + 1, span.inside / 2, span.inside.saturating_sub(1)];
+            positions.extend(picks.iter().filter(|&&pick| pick < span.inside).map(|pick| span.start + pick));
+        }
+        positions.sort_unstable();
+        let wanted: Vec<Wanted> =
+            positions.iter().enumerate().map(|(place, &position)| Wanted { position, place }).collect();
+        let mut found = vec![f64::NAN; wanted.len()];
+        let (one, other) = listed.split_at(listed.len() / 3);
+        select(&[one, other], kind, &spans, &wanted, &mut Scratch::default(), &mut |place, value| found[place] = value);
+        assert_eq!(found, positions.iter().map(|&position| sorted[position]).collect::<Vec<_>>());
+    }
+
     #[test]
     fn selects_what_sorting_would() {
-        for count in [1, 10, 1000, 5000, 40_000, 300_000] {
-            for sieve in [
-                Sieve::wide(&[(1e6, 1.2e7), (1.4e7, 1.6e7)], &[]),
-                Sieve::exact(&[(1e6, 1.2e7), (1.4e7, f64::INFINITY)], &[]),
-            ] {
-                let all: Vec<f64> = values(count)
-                    .into_iter()
-                    .filter(|&v| sieve.brackets().iter().any(|b| b.0 <= v && v < b.1))
-                    .collect();
-                let (one, other) = all.split_at(all.len() / 3);
-                let mut expected = Vec::new();
-                let brackets: Vec<Bracket> = sieve
-                    .brackets()
-                    .iter()
-                    .map(|&(low, high)| {
-                        let mut inside: Vec<f64> = all.iter().copied().filter(|&v| v >= low && v < high).collect();
-                        inside.sort_by(f64::total_cmp);
-                        let middle = inside.len() / 2;
-                        let ranks: Vec<usize> =
-                            [0, 0, 1, 5, 5, 40].iter().map(|r| middle + r).filter(|&r| r < inside.len()).collect();
-                        expected.push(ranks.iter().map(|&r| inside[r]).collect::<Vec<f64>>());
-                        let from = all.iter().filter(|&&v| v >= low).count();
-                        Bracket { low, high, inside: inside.len(), from, ranks }
-                    })
-                    .collect();
-                let mut found: Vec<Vec<f64>> = expected.iter().map(|e| vec![f64::NAN; e.len()]).collect();
-                let mut take = |bracket: usize, place: usize, value| found[bracket][place] = value;
-                select(&[one, other], &sieve, &brackets, &mut Scratch::default(), &mut take);
-                assert_eq!(found, expected, "{count} values");
+        let bend: [fn(f64) -> f64; 5] = [
+            |value| value,
+            |value| value * value * value,
+            // Two clusters, steps, and all alike.
+            |value| if value < 0.3 { 0.2 + 1e-6 * value } else { 0.9 + 1e-3 * value },
+            |value| (value * 20.0).floor() / 20.0,
+            |_| 0.5,
+        ];
+        for count in [1, 10, 1000, 5000, 40_000] {
+            for bend in bend {
+                let all: Vec<f64> = values(count).iter().map(|value| bend(value / 16_777_216.0)).collect();
+                let wide = Sieve::wide(&[], &[]);
+                check(&all, &[(0.0, f64::INFINITY)], &wide);
+                check(&all, &[(0.0, 0.125), (0.1875, 0.25), (0.25, 0.5), (0.5, 0.5), (0.75, f64::INFINITY)], &wide);
+                let signed: Vec<f64> = all.iter().map(|value| value - 0.4).collect();
+                check(&signed, &[(f64::NEG_INFINITY, -0.2), (-0.1, 0.1), (0.1, 0.3)], &Sieve::exact(&[], &[]));
             }
         }
     }

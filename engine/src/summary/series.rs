@@ -2,7 +2,7 @@
 
 use crate::math::{Kept, Sieve};
 
-use super::select::{Bracket, Scratch, select};
+use super::select::{Scratch, Span, Wanted, select};
 
 /// Edges of a window: shares are counts at or above them.
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -68,7 +68,7 @@ impl Search {
         edges.extend(points.iter().flat_map(|value| [*value, value.next_up()]));
         // Ties within brackets are kept out by comparing whole values.
         let exact = signed || (!points.is_empty() && !brackets.is_empty());
-        let sieve = if exact { Sieve::exact(&brackets, &edges) } else { Sieve::wide(&merged(&brackets), &edges) };
+        let sieve = if exact { Sieve::exact(&brackets, &edges) } else { Sieve::wide(&brackets, &edges) };
         Self { sieve, points, window: window.is_some(), share }
     }
 
@@ -99,27 +99,20 @@ impl Search {
         // Everything that is known, in rising order: a value and how many values lie below it.
         let mut known: Vec<(f64, u64)> = Vec::new();
         let lists: Vec<&[f64]> = kept.iter().flat_map(|kept| kept.lists()).collect();
-        let brackets = self.sieve.brackets();
-        let held = |index: usize| kept.iter().map(|kept| kept.in_bracket[index]).sum::<u64>();
-        let mut places = Vec::with_capacity(brackets.len());
-        let mut searched = Vec::with_capacity(brackets.len());
-        for (index, &(low, high)) in brackets.iter().enumerate() {
+        let (mut spans, mut wanted, mut start) = (Vec::new(), Vec::new(), 0);
+        for (index, &(low, high)) in self.sieve.brackets().iter().enumerate() {
             let below = patients - kept.iter().map(|kept| kept.from_bracket[index]).sum::<u64>();
-            let inside = held(index);
+            let inside = kept.iter().map(|kept| kept.in_bracket[index]).sum::<u64>();
             let above = below + inside;
-            let start = ranks.partition_point(|&rank| rank < below);
-            let end = ranks.partition_point(|&rank| rank < above);
+            let places = ranks.partition_point(|&rank| rank < below)..ranks.partition_point(|&rank| rank < above);
+            wanted.extend(places.map(|place| Wanted { position: start + (ranks[place] - below) as usize, place }));
+            spans.push(Span { low, high, start, inside: inside as usize });
             // Values are kept within brackets only, which rise.
-            let from = (index..brackets.len()).map(held).sum::<u64>();
-            let wanted = ranks[start..end].iter().map(|&rank| (rank - below) as usize).collect();
-            searched.push(Bracket { low, high, inside: inside as usize, from: from as usize, ranks: wanted });
-            places.push(start);
+            start += inside as usize;
             known.push((low, below));
             known.push((high, above));
         }
-        select(&lists, &self.sieve, &searched, scratch, &mut |bracket, place, value| {
-            found[places[bracket] + place] = Found::Value(value);
-        });
+        select(&lists, &self.sieve, &spans, &wanted, scratch, &mut |place, value| found[place] = Found::Value(value));
         let offset = if self.window { 2 } else { 0 };
         for (index, &value) in self.points.iter().enumerate() {
             let from = |edge: usize| kept.iter().map(|kept| kept.from_edge[edge]).sum::<u64>();
@@ -157,17 +150,4 @@ pub enum Found {
     Value(f64),
     /// The bracket was missed; it lies here.
     Between(f64, f64, u64),
-}
-
-/// Brackets that touch or overlap become one. Widening moves ends by a relative 1e-6, so nearly touching ones count as
-/// touching.
-fn merged(brackets: &[(f64, f64)]) -> Vec<(f64, f64)> {
-    let mut out: Vec<(f64, f64)> = Vec::with_capacity(brackets.len());
-    for &(low, high) in brackets {
-        match out.last_mut() {
-            Some(last) if low <= last.1 * (1.0 + 4e-6) => last.1 = last.1.max(high),
-            _ => out.push((low, high)),
-        }
-    }
-    out
 }

@@ -1,8 +1,6 @@
 //! Kernels written for one kind of processor, each beside the plain scalar twin that tests compare it to. The only place
 //! with `unsafe`.
 
-mod narrow;
 mod sift;
 
-pub use narrow::narrow;
 pub use sift::{Kept, Sieve, chunk_for};

@@ -1,7 +1,8 @@
 //! Counts values at or above some edges, and keeps those within some brackets, in one go over a block.
 //!
-//! Comparing is the cost of exact percentiles, so most comparisons look at the upper 32 bits of a value only: edges that end in
-//! 32 zero bits order the values exactly as all 64 bits would, at half the price. Values therefore must be `+0` or above.
+//! Comparing is the cost of exact percentiles, so most comparisons look at 16 bits of a value only: the ends of brackets are
+//! moved outwards to the lines of a grid, and the number of its cell orders a value as all 64 bits would, at a quarter of the
+//! price. Values therefore must be `+0` or above.
 
 use crate::math::{LANES, Row};
 
@@ -13,27 +14,80 @@ pub struct Sieve {
     /// The upper halves of the brackets' ends, where they decide; else values are compared whole.
     keys: Option<Vec<(u32, u32)>>,
     edges: Vec<f64>,
-    /// The upper half of each edge, for values of `+0` and above.
-    edge_keys: Vec<EdgeKey>,
+    /// The same on a grid, where one is fine enough.
+    cells: Option<Cells>,
 }
 
-/// The upper half that values at or above an edge reach.
+/// A sieve's brackets and edges on a grid.
+#[derive(Clone, Debug, PartialEq)]
+struct Cells {
+    grid: Grid,
+    /// First and last cell of each bracket.
+    brackets: Vec<(u16, u16)>,
+    /// One entry an edge, or empty where edges are compared whole.
+    edges: Vec<Edge>,
+}
+
+/// Where an edge lies on a grid.
 #[derive(Clone, Copy, Debug, PartialEq)]
-struct EdgeKey {
-    /// Values whose upper half is at least this are at or above the edge.
-    from: u32,
-    /// Values with this upper half may be on either side: whole values decide.
-    doubtful: Option<u32>,
+enum Edge {
+    /// All values are at or above it.
+    Below,
+    /// At the lower end of a cell.
+    At(u16),
+    /// Within a cell: its values must be compared whole.
+    Within(u16),
+    /// No value is at or above it.
+    Beyond,
 }
 
-impl EdgeKey {
-    fn new(edge: f64) -> Self {
-        if edge.is_sign_negative() {
-            return Self { from: 0, doubtful: None };
+/// Divides the keys, the upper halves of values, into cells of a power of two. Cell 0 also holds everything below it, the last
+/// one everything above it; the ends that a grid was made for lie between them.
+#[derive(Clone, Copy, Debug, PartialEq)]
+struct Grid {
+    base: i32,
+    shift: u32,
+}
+
+/// Coarsest grid: cells of a relative 2^-12, and 16 octaves.
+const COARSEST: u32 = 8;
+
+impl Grid {
+    /// The finest grid with all of `keys` between its first and its last cell.
+    fn new(keys: impl Iterator<Item = u32> + Clone) -> Option<Self> {
+        let (least, most) = (keys.clone().min().unwrap_or(0), keys.max().unwrap_or(0));
+        (0..=COARSEST)
+            .map(|shift| Self { base: (((least >> shift) << shift).cast_signed()) - (1 << shift), shift })
+            .find(|grid| grid.cell(most) + 1 < i32::from(u16::MAX))
+    }
+
+    fn cell(self, key: u32) -> i32 {
+        (key.cast_signed() - self.base) >> self.shift
+    }
+
+    /// The keys that `low` and `high` become if moved outwards to lines of the grid.
+    fn outwards(self, (low, high): (u32, u32)) -> (u32, u32) {
+        let rest = (1 << self.shift) - 1;
+        (low & !rest, if high == ABOVE_ALL { high } else { (high + rest) & !rest })
+    }
+
+    /// First and last cell of a bracket with its ends on lines of the grid.
+    fn bracket(self, (low, high): (u32, u32)) -> (u16, u16) {
+        let first = if low == 0 { 0 } else { self.cell(low) };
+        let last = if high == ABOVE_ALL { i32::from(u16::MAX) } else { self.cell(high) - 1 };
+        (first as u16, last as u16)
+    }
+
+    fn edge(self, edge: f64) -> Edge {
+        if edge.is_nan() {
+            Edge::Beyond
+        } else if edge <= 0.0 {
+            Edge::Below
+        } else {
+            let cell = self.cell(upper(edge)) as u16;
+            let on_line = edge.to_bits().trailing_zeros() >= 32 + self.shift;
+            if on_line { Edge::At(cell) } else { Edge::Within(cell) }
         }
-        let whole = edge.to_bits() << 32 == 0;
-        let key = upper(edge);
-        Self { from: key + u32::from(!whole), doubtful: (!whole).then_some(key) }
     }
 }
 
@@ -48,9 +102,9 @@ pub struct Kept {
     pub from_edge: Vec<u64>,
     /// Values within any bracket, in the order they came: the last of them. Chunks that are full stand in `full`: nothing is ever
     /// moved, so memory is what was kept and no more.
-    pub values: Vec<f64>,
+    values: Vec<f64>,
     /// Values that came before.
-    pub full: Vec<Vec<f64>>,
+    full: Vec<Vec<f64>>,
     /// Values in a chunk.
     chunk: usize,
 }
@@ -104,9 +158,9 @@ fn upper(value: f64) -> u32 {
 }
 
 impl Sieve {
-    /// A sieve for values of `+0` and above, with `brackets` that are closed below and open above and do not overlap, and single
-    /// `edges`. Each bracket is widened to the next numbers that end in 32 zero bits, a relative 1e-6;
-    /// [`Sieve::brackets`] tells its ends as they act.
+    /// A sieve for values of `+0` and above, with rising `brackets` that are closed below and open above, and single `edges`. Each
+    /// bracket is widened a little, by a relative 2.5e-4 at most at either end, and those that then touch become one;
+    /// [`Sieve::brackets`] tells them as they act.
     ///
     /// # Panics
     /// If a bracket's ends are negative or not in order.
@@ -119,53 +173,25 @@ impl Sieve {
                 (upper(low), if high == f64::INFINITY { ABOVE_ALL } else { above })
             })
             .collect();
+        let lows = keys.iter().map(|key| key.0).filter(|&low| low != 0);
+        let ends = lows.chain(keys.iter().map(|key| key.1).filter(|&high| high != ABOVE_ALL));
+        let decided = edges.iter().filter(|&&edge| edge > 0.0).map(|&edge| upper(edge));
+        let with_edges = Grid::new(ends.clone().chain(decided));
+        let grid = with_edges.or_else(|| Grid::new(ends));
+        let keys = merged(keys.iter().map(|&ends| grid.map_or(ends, |grid| grid.outwards(ends))));
+        let cells = grid.map(|grid| Cells {
+            grid,
+            brackets: keys.iter().map(|&ends| grid.bracket(ends)).collect(),
+            edges: with_edges.map_or_else(Vec::new, |grid| edges.iter().map(|&edge| grid.edge(edge)).collect()),
+        });
         let end = |key: u32| if key == ABOVE_ALL { f64::INFINITY } else { f64::from_bits(u64::from(key) << 32) };
         let brackets = keys.iter().map(|&(low, high)| (end(low), end(high))).collect();
-        Self {
-            brackets,
-            keys: Some(keys),
-            edges: edges.to_vec(),
-            edge_keys: edges.iter().copied().map(EdgeKey::new).collect(),
-        }
+        Self { brackets, keys: Some(keys), edges: edges.to_vec(), cells }
     }
 
     /// A sieve whose brackets act exactly as given, for values of any sign.
     pub fn exact(brackets: &[(f64, f64)], edges: &[f64]) -> Self {
-        Self { brackets: brackets.to_vec(), keys: None, edges: edges.to_vec(), edge_keys: Vec::new() }
-    }
-
-    /// Asks the processor to fetch what sifting into `kept` will soon need. Each series has a list of its own, whose end has long left
-    /// the cache: without this, stores to it hold up all that follow. The same goes for its counts and its brackets.
-    #[inline]
-    pub fn prefetch(&self, kept: &Kept) {
-        #[cfg(target_arch = "x86_64")]
-        {
-            avx512::prefetch_list(&kept.values);
-            avx512::prefetch(&kept.from_bracket);
-            avx512::prefetch(&kept.in_bracket);
-            avx512::prefetch(&kept.from_edge);
-            avx512::prefetch(&self.edge_keys);
-            if let Some(keys) = &self.keys {
-                avx512::prefetch(keys);
-            }
-        }
-    }
-
-    /// A sieve of the same kind with other brackets and no edges.
-    #[must_use]
-    pub fn with_brackets(&self, brackets: &[(f64, f64)]) -> Self {
-        if self.keys.is_some() { Self::wide(brackets, &[]) } else { Self::exact(brackets, &[]) }
-    }
-
-    /// Sifts a list of any length.
-    pub fn sift_list(&self, values: &[f64], kept: &mut Kept) {
-        let (rows, rest) = values.as_chunks::<LANES>();
-        for row in rows {
-            self.sift(row, 1.0, LANES, kept);
-        }
-        let mut last = Row::ZERO;
-        last[..rest.len()].copy_from_slice(rest);
-        self.sift(&last, 1.0, rest.len(), kept);
+        Self { brackets: brackets.to_vec(), keys: None, edges: edges.to_vec(), cells: None }
     }
 
     /// The brackets as they act: from the first, up to but not including the second, or to infinity and with it.
@@ -187,11 +213,65 @@ impl Sieve {
         }
     }
 
+    /// Asks the processor to fetch what sifting into `kept` will soon need. Each series has a list of its own, whose end has long left
+    /// the cache: without this, stores to it hold up all that follow. The same goes for its counts and its brackets.
+    #[inline]
+    pub fn prefetch(&self, kept: &Kept) {
+        #[cfg(target_arch = "x86_64")]
+        {
+            avx512::prefetch_list(&kept.values);
+            avx512::prefetch(&kept.from_bracket);
+            avx512::prefetch(&kept.in_bracket);
+            avx512::prefetch(&kept.from_edge);
+            if let Some(cells) = &self.cells {
+                avx512::prefetch(&cells.brackets);
+                avx512::prefetch(&cells.edges);
+            }
+        }
+    }
+
+    /// A sieve of the same kind with other brackets, and no edges.
+    #[must_use]
+    pub fn like(&self, brackets: &[(f64, f64)]) -> Self {
+        if self.keys.is_some() { Self::wide(brackets, &[]) } else { Self::exact(brackets, &[]) }
+    }
+
+    /// Empties `kept` for this sieve.
+    pub fn empty(&self, kept: &mut Kept) {
+        for counts in [&mut kept.from_bracket, &mut kept.in_bracket] {
+            counts.clear();
+            counts.resize(self.brackets.len(), 0);
+        }
+        kept.from_edge.clear();
+        kept.from_edge.resize(self.edges.len(), 0);
+        kept.values.clear();
+        kept.full.clear();
+        kept.chunk = LARGEST_CHUNK + ROOM;
+    }
+
+    /// Sifts a list.
+    pub fn sift_list(&self, values: &[f64], kept: &mut Kept) {
+        let (rows, rest) = values.as_chunks();
+        for row in rows {
+            self.sift_lanes(row, 1.0, LANES, kept);
+        }
+        let mut last = [0.0; LANES];
+        last[..rest.len()].copy_from_slice(rest);
+        self.sift_lanes(&last, 1.0, rest.len(), kept);
+    }
+
     /// Sifts the first `count` lanes of `row`, each times `scale`.
-    pub fn sift(&self, row: &[f64; LANES], scale: f64, count: usize, kept: &mut Kept) {
+    pub fn sift(&self, row: &Row, scale: f64, count: usize, kept: &mut Kept) {
+        self.sift_lanes(&row.0, scale, count, kept);
+    }
+
+    fn sift_lanes(&self, row: &[f64; LANES], scale: f64, count: usize, kept: &mut Kept) {
         if !self.brackets.is_empty() && kept.values.capacity() - kept.values.len() < ROOM {
             let next = Vec::with_capacity(kept.chunk.max(ROOM));
-            kept.full.push(std::mem::replace(&mut kept.values, next));
+            let last = std::mem::replace(&mut kept.values, next);
+            if !last.is_empty() {
+                kept.full.push(last);
+            }
         }
         #[cfg(target_arch = "x86_64")]
         if count == LANES && avx512::available() {
@@ -202,12 +282,16 @@ impl Sieve {
             }
             return;
         }
-        self.sift_plain(row, scale, count, kept);
+        self.sift_lanes_plain(row, scale, count, kept);
     }
 
     /// The plain twin of the kernel.
-    pub fn sift_plain(&self, row: &[f64; LANES], scale: f64, count: usize, kept: &mut Kept) {
-        let mut values = Row(*row);
+    pub fn sift_plain(&self, row: &Row, scale: f64, count: usize, kept: &mut Kept) {
+        self.sift_lanes_plain(&row.0, scale, count, kept);
+    }
+
+    fn sift_lanes_plain(&self, row: &[f64; LANES], scale: f64, count: usize, kept: &mut Kept) {
+        let mut values = *row;
         plain::scale(&mut values, scale);
         let mut within = [0u32; LANES];
         let totals = kept.from_bracket.iter_mut().zip(&mut kept.in_bracket);
@@ -240,21 +324,33 @@ impl Sieve {
     }
 }
 
+/// Rising brackets; those that touch or overlap become one.
+fn merged(brackets: impl Iterator<Item = (u32, u32)>) -> Vec<(u32, u32)> {
+    let mut out: Vec<(u32, u32)> = Vec::new();
+    for (low, high) in brackets {
+        match out.last_mut() {
+            Some(last) if low <= last.1 => last.1 = last.1.max(high),
+            _ => out.push((low, high)),
+        }
+    }
+    out
+}
+
 mod plain {
     use multiversion::multiversion;
 
-    use crate::math::{LANES, Row};
+    use crate::math::LANES;
 
     #[multiversion(targets("x86_64+avx2"))]
-    pub(super) fn scale(values: &mut Row, scale: f64) {
-        for value in &mut values.0 {
+    pub(super) fn scale(values: &mut [f64; LANES], scale: f64) {
+        for value in values {
             *value *= scale;
         }
     }
 
     #[multiversion(targets("x86_64+avx2"))]
-    pub(super) fn keys(values: &Row, keys: &mut [u32; LANES]) {
-        for (key, value) in keys.iter_mut().zip(&values.0) {
+    pub(super) fn keys(values: &[f64; LANES], keys: &mut [u32; LANES]) {
+        for (key, value) in keys.iter_mut().zip(values) {
             *key = (value.to_bits() >> 32) as u32;
         }
     }
@@ -280,7 +376,7 @@ mod plain {
 
     #[multiversion(targets("x86_64+avx2"))]
     pub(super) fn bracket_exact(
-        values: &Row,
+        values: &[f64; LANES],
         low: f64,
         high: f64,
         count: usize,
@@ -288,7 +384,7 @@ mod plain {
     ) -> (u32, u32) {
         let (mut total, mut held) = (0, 0);
         let open = u32::from(high == f64::INFINITY);
-        for (value, within) in values.0[..count].iter().zip(&mut within[..count]) {
+        for (value, within) in values[..count].iter().zip(&mut within[..count]) {
             let from = u32::from(*value >= low);
             let inside = from & (u32::from(*value < high) | open);
             total += from;
@@ -298,10 +394,25 @@ mod plain {
         (total, held)
     }
 
+    /// Lists the lanes whose bits are set; returns how many there are.
+    #[cfg(target_arch = "x86_64")]
+    pub(super) fn list(bits: &[u64; LANES / 64], lanes: &mut [u8; LANES + 64]) -> usize {
+        let mut count = 0;
+        for (index, &bits) in bits.iter().enumerate() {
+            let mut left = bits;
+            while left != 0 {
+                lanes[count] = (64 * index as u32 + left.trailing_zeros()) as u8;
+                left &= left - 1;
+                count += 1;
+            }
+        }
+        count
+    }
+
     #[multiversion(targets("x86_64+avx2"))]
-    pub(super) fn edge(values: &Row, edge: f64, count: usize) -> u32 {
+    pub(super) fn edge(values: &[f64; LANES], edge: f64, count: usize) -> u32 {
         let mut total = 0;
-        for value in &values.0[..count] {
+        for value in &values[..count] {
             total += u32::from(*value >= edge);
         }
         total
@@ -315,15 +426,17 @@ mod plain {
 )]
 mod avx512 {
     use std::arch::x86_64::{
-        __m512d, __m512i, _CMP_GE_OQ, _CMP_NGE_UQ, _MM_HINT_ET0, _MM_HINT_T0, _mm_prefetch, _mm256_loadu_si256,
-        _mm512_add_epi32, _mm512_castpd_si512, _mm512_cmp_pd_mask, _mm512_cmpeq_epu32_mask, _mm512_cmpge_epu32_mask,
-        _mm512_loadu_pd, _mm512_mask_cmp_pd_mask, _mm512_mask_cmplt_epu32_mask, _mm512_mask_i32gather_pd,
-        _mm512_maskz_compress_epi32, _mm512_maskz_compress_pd, _mm512_mul_pd, _mm512_permutex2var_epi32,
-        _mm512_set1_epi32, _mm512_set1_pd, _mm512_setr_epi32, _mm512_setzero_pd, _mm512_storeu_epi32, _mm512_storeu_pd,
+        __m512d, __m512i, _CMP_GE_OQ, _CMP_NGE_UQ, _MM_HINT_ET0, _MM_HINT_T0, _mm_prefetch, _mm512_add_epi8,
+        _mm512_castpd_si512, _mm512_cmp_pd_mask, _mm512_cmpge_epu16_mask, _mm512_loadu_epi8, _mm512_loadu_pd,
+        _mm512_mask_add_epi64, _mm512_mask_cmp_pd_mask, _mm512_mask_cmple_epu16_mask, _mm512_mask_cmpneq_epu16_mask,
+        _mm512_maskz_compress_epi8, _mm512_mul_pd, _mm512_packus_epi32, _mm512_permutex2var_epi32,
+        _mm512_reduce_add_epi64, _mm512_set1_epi8, _mm512_set1_epi16, _mm512_set1_epi32, _mm512_set1_epi64,
+        _mm512_set1_pd, _mm512_setr_epi32, _mm512_setzero_si512, _mm512_srav_epi32, _mm512_storeu_epi8,
+        _mm512_sub_epi32, _pext_u64,
     };
-    use std::mem::MaybeUninit;
+    use std::hint::black_box;
 
-    use super::{EdgeKey, Kept, ROOM, Sieve};
+    use super::{Cells, Edge, Grid, Kept, ROOM, Sieve};
     use crate::math::LANES;
 
     /// Lines that a block's kept values usually fill.
@@ -347,69 +460,26 @@ mod avx512 {
     }
 
     pub(super) fn available() -> bool {
-        is_x86_feature_detected!("avx512f") && is_x86_feature_detected!("popcnt")
+        is_x86_feature_detected!("avx512f")
+            && is_x86_feature_detected!("avx512bw")
+            && is_x86_feature_detected!("bmi2")
+            && is_x86_feature_detected!("popcnt")
     }
 
     /// # Safety
-    /// The processor must have AVX-512F and POPCNT; `kept.values` must have room for [`ROOM`] more if there are brackets.
-    #[target_feature(enable = "avx512f,popcnt")]
+    /// The processor must be [`available`]; `kept.values` must have room for [`ROOM`] more if there are brackets.
+    #[target_feature(enable = "avx512f,avx512bw,bmi2,popcnt")]
     pub(super) unsafe fn sift(sieve: &Sieve, row: &[f64; LANES], scale: f64, kept: &mut Kept) {
-        let Some(keys) = &sieve.keys else {
-            edges(&sieve.edges, row, scale, &mut kept.from_edge);
-            if !sieve.brackets.is_empty() {
-                // SAFETY: as above.
-                unsafe { whole(&sieve.brackets, row, scale, kept) };
+        if let Some(cells) = &sieve.cells {
+            by_cell(sieve, cells, row, scale, kept);
+            if cells.edges.len() == sieve.edges.len() {
+                return;
             }
-            return;
-        };
-        // A window has two edges, and they go along with the brackets; other numbers of edges go by themselves.
-        let window: Option<&[EdgeKey; 2]> = sieve.edge_keys.as_slice().try_into().ok();
-        if window.is_none() {
-            edges(&sieve.edges, row, scale, &mut kept.from_edge);
+        } else if !sieve.brackets.is_empty() {
+            whole(&sieve.brackets, row, scale, kept);
         }
-        // SAFETY: as above.
-        let decided = unsafe {
-            match window {
-                Some(window) => by_number(keys, window, sieve, row, scale, kept),
-                None => by_number(keys, &[], sieve, row, scale, kept),
-            }
-        };
-        if !decided {
-            edges(&sieve.edges, row, scale, &mut kept.from_edge);
-        }
-    }
-
-    /// Chooses the kernel for a number of brackets. Says whether the edges could be counted by their upper halves.
-    ///
-    /// # Safety
-    /// As [`by_key`].
-    #[inline]
-    #[target_feature(enable = "avx512f,popcnt")]
-    unsafe fn by_number<const E: usize>(
-        keys: &[(u32, u32)],
-        edges: &[EdgeKey; E],
-        sieve: &Sieve,
-        row: &[f64; LANES],
-        scale: f64,
-        kept: &mut Kept,
-    ) -> bool {
-        // SAFETY: as the caller's.
-        unsafe {
-            match *keys {
-                [] => by_key([], edges, row, scale, kept),
-                [a] => by_key([a], edges, row, scale, kept),
-                [a, b] => by_key([a, b], edges, row, scale, kept),
-                [a, b, c] => by_key([a, b, c], edges, row, scale, kept),
-                [a, b, c, d] => by_key([a, b, c, d], edges, row, scale, kept),
-                [a, b, c, d, e] => by_key([a, b, c, d, e], edges, row, scale, kept),
-                [a, b, c, d, e, f] => by_key([a, b, c, d, e, f], edges, row, scale, kept),
-                [a, b, c, d, e, f, g] => by_key([a, b, c, d, e, f, g], edges, row, scale, kept),
-                [a, b, c, d, e, f, g, h] => by_key([a, b, c, d, e, f, g, h], edges, row, scale, kept),
-                _ => {
-                    whole(&sieve.brackets, row, scale, kept);
-                    by_key([], edges, row, scale, kept)
-                }
-            }
+        for (&edge, total) in sieve.edges.iter().zip(&mut kept.from_edge) {
+            *total += one_edge(edge, row, scale);
         }
     }
 
@@ -422,134 +492,166 @@ mod avx512 {
         unsafe { _mm512_loadu_pd(row.as_ptr().add(8 * index)) }
     }
 
-    /// Brackets and edges that the upper half of a value decides. Says whether it did for all edges; else none was counted.
-    ///
-    /// # Safety
-    /// `kept.values` must have room for [`ROOM`] more if there are brackets.
+    /// The cells of a row, 32 lanes a vector: in vector `2 q` sixteen of them from lane `64 q`, taken in turns of four with
+    /// sixteen from lane `64 q + 32`; in the next vector those that follow either.
     #[inline]
-    #[target_feature(enable = "avx512f,popcnt")]
-    unsafe fn by_key<const N: usize, const E: usize>(
-        brackets: [(u32, u32); N],
-        edges: &[EdgeKey; E],
-        row: &[f64; LANES],
-        scale: f64,
-        kept: &mut Kept,
-    ) -> bool {
-        debug_assert!(N == 0 || kept.values.capacity() - kept.values.len() >= ROOM);
-        let factor = _mm512_set1_pd(scale);
+    #[target_feature(enable = "avx512f,avx512bw")]
+    fn cells_of(row: &[f64; LANES], scale: f64, grid: Grid) -> [__m512i; LANES / 32] {
+        let scale = _mm512_set1_pd(scale);
         let odd = _mm512_setr_epi32(1, 3, 5, 7, 9, 11, 13, 15, 17, 19, 21, 23, 25, 27, 29, 31);
-        let lows = brackets.map(|(low, _)| splat(low));
-        let highs = brackets.map(|(_, high)| splat(high));
-        let froms = edges.map(|edge| splat(edge.from));
-        // No value has the key of a number that is none.
-        let doubtful = edges.map(|edge| splat(edge.doubtful.unwrap_or(u32::MAX)));
-        let (mut from, mut held, mut at_edge, mut doubts) = ([0u32; N], [0u32; N], [0u32; E], 0);
-        // Which lanes are kept: written one vector after the other, each over the unused end of the one before.
-        let mut lanes = [const { MaybeUninit::<u32>::uninit() }; LANES + 16];
-        let mut count = 0;
-        let mut lane = _mm512_setr_epi32(0, 1, 2, 3, 4, 5, 6, 7, 8, 9, 10, 11, 12, 13, 14, 15);
-        for pair in 0..LANES / 16 {
-            let low = _mm512_mul_pd(value(row, 2 * pair), factor);
-            let high = _mm512_mul_pd(value(row, 2 * pair + 1), factor);
+        let base = _mm512_set1_epi32(grid.base);
+        // Known to be the same in all lanes, it would become a shift by one register: two steps on a processor, not one.
+        let shift = black_box(_mm512_set1_epi32(grid.shift.cast_signed()));
+        let sixteen = |group: usize| {
+            let low = _mm512_mul_pd(value(row, 2 * group), scale);
+            let high = _mm512_mul_pd(value(row, 2 * group + 1), scale);
             let key = _mm512_permutex2var_epi32(_mm512_castpd_si512(low), odd, _mm512_castpd_si512(high));
-            let mut any = 0;
-            for bracket in 0..N {
-                let at_least = _mm512_cmpge_epu32_mask(key, lows[bracket]);
-                let within = _mm512_mask_cmplt_epu32_mask(at_least, key, highs[bracket]);
-                from[bracket] += at_least.count_ones();
-                held[bracket] += within.count_ones();
-                any |= within;
+            _mm512_srav_epi32(_mm512_sub_epi32(key, base), shift)
+        };
+        std::array::from_fn(|index| {
+            let group = 4 * (index / 2) + index % 2;
+            _mm512_packus_epi32(sixteen(group), sixteen(group + 2))
+        })
+    }
+
+    /// Puts the bits for the 64 lanes of two vectors of [`cells_of`] into the order of the lanes.
+    #[inline]
+    #[target_feature(enable = "bmi2")]
+    fn in_order(first: u32, second: u32) -> u64 {
+        const TURNS: u64 = 0x0f0f_0f0f_0f0f_0f0f;
+        let bits = u64::from(first) | u64::from(second) << 32;
+        _pext_u64(bits, TURNS) | _pext_u64(bits, !TURNS) << 32
+    }
+
+    /// Brackets, and edges, by the cells that values lie in.
+    #[inline]
+    #[target_feature(enable = "avx512f,avx512bw,bmi2,popcnt")]
+    fn by_cell(sieve: &Sieve, on_grid: &Cells, row: &[f64; LANES], scale: f64, kept: &mut Kept) {
+        let cells = cells_of(row, scale, on_grid.grid);
+        let mut any = [0; LANES / 32];
+        let totals = kept.from_bracket.iter_mut().zip(&mut kept.in_bracket);
+        for (&(first, last), (from_bracket, in_bracket)) in on_grid.brackets.iter().zip(totals) {
+            let first = _mm512_set1_epi16(first.cast_signed());
+            let last = _mm512_set1_epi16(last.cast_signed());
+            let (mut from, mut held) = (0, 0);
+            for (&cell, any) in cells.iter().zip(&mut any) {
+                let at_least = _mm512_cmpge_epu16_mask(cell, first);
+                let within = _mm512_mask_cmple_epu16_mask(at_least, cell, last);
+                from += u64::from(at_least.count_ones());
+                held += u64::from(within.count_ones());
+                *any |= within;
             }
-            for edge in 0..E {
-                at_edge[edge] += _mm512_cmpge_epu32_mask(key, froms[edge]).count_ones();
-                if edges[edge].doubtful.is_some() {
-                    doubts |= _mm512_cmpeq_epu32_mask(key, doubtful[edge]);
-                }
-            }
-            if N > 0 {
-                // SAFETY: at most LANES lanes are kept in all, and a store writes at most 16 past the last.
-                unsafe {
-                    let end = lanes.as_mut_ptr().add(count).cast::<i32>();
-                    _mm512_storeu_epi32(end, _mm512_maskz_compress_epi32(any, lane));
-                }
-                count += any.count_ones() as usize;
-                lane = _mm512_add_epi32(lane, _mm512_set1_epi32(16));
+            *from_bracket += from;
+            *in_bracket += held;
+        }
+        for ((&edge, &whole), total) in on_grid.edges.iter().zip(&sieve.edges).zip(&mut kept.from_edge) {
+            *total += match edge {
+                Edge::Within(cell) if holds(&cells, cell) => one_edge(whole, row, scale),
+                Edge::Within(cell) | Edge::At(cell) => from_cell(&cells, cell),
+                Edge::Below => LANES as u64,
+                Edge::Beyond => 0,
+            };
+        }
+        if !on_grid.brackets.is_empty() {
+            let bits = std::array::from_fn(|index| in_order(any[2 * index], any[2 * index + 1]));
+            keep(&bits, row, scale, &mut kept.values);
+        }
+    }
+
+    /// How many lanes lie in `cell` or above.
+    #[inline]
+    #[target_feature(enable = "avx512f,avx512bw,popcnt")]
+    fn from_cell(cells: &[__m512i; LANES / 32], cell: u16) -> u64 {
+        let first = _mm512_set1_epi16(cell.cast_signed());
+        cells.iter().map(|&cells| u64::from(_mm512_cmpge_epu16_mask(cells, first).count_ones())).sum()
+    }
+
+    /// Whether any lane lies in `cell`.
+    #[inline]
+    #[target_feature(enable = "avx512f,avx512bw")]
+    fn holds(cells: &[__m512i; LANES / 32], cell: u16) -> bool {
+        let one = _mm512_set1_epi16(cell.cast_signed());
+        cells.iter().fold(u32::MAX, |none, &cells| _mm512_mask_cmpneq_epu16_mask(none, cells, one)) != u32::MAX
+    }
+
+    /// Values copied at a time without looking whether there are as many.
+    const BATCH: usize = 8;
+
+    /// Appends the lanes whose bits are set, in order, times `scale`.
+    #[inline]
+    fn keep(bits: &[u64; LANES / 64], row: &[f64; LANES], scale: f64, values: &mut Vec<f64>) {
+        let mut lanes = [0; LANES + 64];
+        let count = if is_x86_feature_detected!("avx512vbmi2") {
+            // SAFETY: the processor has this and, like all that do, the others.
+            unsafe { list(bits, &mut lanes) }
+        } else {
+            super::plain::list(bits, &mut lanes)
+        };
+        let (room, _) = values.spare_capacity_mut()[..ROOM].as_chunks_mut::<BATCH>();
+        for (room, lanes) in room[..count.div_ceil(BATCH)].iter_mut().zip(lanes.as_chunks::<BATCH>().0) {
+            for (place, &lane) in room.iter_mut().zip(lanes) {
+                place.write(row[usize::from(lane)] * scale);
             }
         }
-        let start = kept.values.len();
-        for first in (0..count).step_by(8) {
-            let some = 0xff_u8 >> 8usize.saturating_sub(count - first).min(7);
-            // SAFETY: the first `count` lanes were written and lie within the row; the others are masked. A store writes at most 8
-            // past the last value: the caller made that room.
-            unsafe {
-                let lanes = _mm256_loadu_si256(lanes.as_ptr().add(first).cast());
-                let values = _mm512_mask_i32gather_pd::<8>(_mm512_setzero_pd(), some, lanes, row.as_ptr());
-                let end = kept.values.as_mut_ptr().add(start + first);
-                _mm512_storeu_pd(end, _mm512_mul_pd(values, factor));
+        // SAFETY: `count` values, and the rest of a batch, were just written into spare room.
+        unsafe { values.set_len(values.len() + count) };
+    }
+
+    /// Lists the lanes whose bits are set; returns how many there are. Beyond them stand others.
+    #[target_feature(enable = "avx512f,avx512bw,avx512vbmi2,popcnt")]
+    fn list(bits: &[u64; LANES / 64], lanes: &mut [u8; LANES + 64]) -> usize {
+        const FIRST: [u8; 64] = {
+            let mut lanes = [0; 64];
+            let mut lane = 0;
+            while lane < 64 {
+                lanes[lane] = lane as u8;
+                lane += 1;
             }
+            lanes
+        };
+        // SAFETY: 64 bytes.
+        let mut all = unsafe { _mm512_loadu_epi8(FIRST.as_ptr().cast()) };
+        let mut count = 0;
+        for &bits in bits {
+            let room = &mut lanes[count..count + 64];
+            // SAFETY: 64 bytes.
+            unsafe { _mm512_storeu_epi8(room.as_mut_ptr().cast(), _mm512_maskz_compress_epi8(bits, all)) };
+            all = _mm512_add_epi8(all, _mm512_set1_epi8(64));
+            count += bits.count_ones() as usize;
         }
-        // SAFETY: `count` values were just written, within the capacity.
-        unsafe { kept.values.set_len(start + count) };
-        for bracket in 0..N {
-            kept.from_bracket[bracket] += u64::from(from[bracket]);
-            kept.in_bracket[bracket] += u64::from(held[bracket]);
-        }
-        if doubts == 0 {
-            for (total, count) in kept.from_edge.iter_mut().zip(at_edge) {
-                *total += u64::from(count);
+        count
+    }
+
+    /// Brackets by whole values.
+    #[target_feature(enable = "avx512f,avx512bw,popcnt")]
+    fn whole(brackets: &[(f64, f64)], row: &[f64; LANES], scale: f64, kept: &mut Kept) {
+        let mut any = [0; LANES / 8];
+        let one = _mm512_set1_epi64(1);
+        let totals = kept.from_bracket.iter_mut().zip(&mut kept.in_bracket);
+        for (&(low, high), (from_bracket, in_bracket)) in brackets.iter().zip(totals) {
+            // Nothing is at or above what is not a number.
+            let high = if high == f64::INFINITY { f64::NAN } else { high };
+            let (low, high, scale) = (_mm512_set1_pd(low), _mm512_set1_pd(high), _mm512_set1_pd(scale));
+            let (mut from, mut held) = (_mm512_setzero_si512(), _mm512_setzero_si512());
+            for (index, any) in any.iter_mut().enumerate() {
+                let scaled = _mm512_mul_pd(value(row, index), scale);
+                let at_least = _mm512_cmp_pd_mask::<_CMP_GE_OQ>(scaled, low);
+                let within = _mm512_mask_cmp_pd_mask::<_CMP_NGE_UQ>(at_least, scaled, high);
+                from = _mm512_mask_add_epi64(from, at_least, from, one);
+                held = _mm512_mask_add_epi64(held, within, held, one);
+                *any |= within;
             }
+            *from_bracket += _mm512_reduce_add_epi64(from).cast_unsigned();
+            *in_bracket += _mm512_reduce_add_epi64(held).cast_unsigned();
         }
-        doubts == 0
+        let any: [u64; LANES / 64] = std::array::from_fn(|index| u64::from_le_bytes(any.as_chunks().0[index]));
+        keep(&any, row, scale, &mut kept.values);
     }
 
     #[inline]
-    #[target_feature(enable = "avx512f")]
-    fn splat(key: u32) -> __m512i {
-        _mm512_set1_epi32(key.cast_signed())
-    }
-
-    /// Any number of brackets, by whole values.
-    ///
-    /// # Safety
-    /// `kept.values` must have room for [`ROOM`] more.
     #[target_feature(enable = "avx512f,popcnt")]
-    unsafe fn whole(brackets: &[(f64, f64)], row: &[f64; LANES], scale: f64, kept: &mut Kept) {
-        debug_assert!(kept.values.capacity() - kept.values.len() >= ROOM);
-        let scale = _mm512_set1_pd(scale);
-        let mut end = kept.values.len();
-        for index in 0..LANES / 8 {
-            let scaled = _mm512_mul_pd(value(row, index), scale);
-            let mut any = 0;
-            for (bracket, &(low, high)) in brackets.iter().enumerate() {
-                // Nothing is at or above what is not a number.
-                let high = if high == f64::INFINITY { f64::NAN } else { high };
-                let at_least = _mm512_cmp_pd_mask::<_CMP_GE_OQ>(scaled, _mm512_set1_pd(low));
-                let within = _mm512_mask_cmp_pd_mask::<_CMP_NGE_UQ>(at_least, scaled, _mm512_set1_pd(high));
-                kept.from_bracket[bracket] += u64::from(at_least.count_ones());
-                kept.in_bracket[bracket] += u64::from(within.count_ones());
-                any |= within;
-            }
-            // SAFETY: as in `by_key`.
-            unsafe { _mm512_storeu_pd(kept.values.as_mut_ptr().add(end), _mm512_maskz_compress_pd(any, scaled)) };
-            end += any.count_ones() as usize;
-        }
-        // SAFETY: the values up to `end` were just written, within the capacity.
-        unsafe { kept.values.set_len(end) };
-    }
-
-    /// Counts at or above each edge, by whole values.
-    #[target_feature(enable = "avx512f,popcnt")]
-    fn edges(edges: &[f64], row: &[f64; LANES], scale: f64, totals: &mut [u64]) {
-        let scale = _mm512_set1_pd(scale);
-        for (&edge, total) in edges.iter().zip(totals) {
-            *total += one_edge(edge, row, scale);
-        }
-    }
-
-    #[inline]
-    #[target_feature(enable = "avx512f,popcnt")]
-    fn one_edge(edge: f64, row: &[f64; LANES], scale: __m512d) -> u64 {
-        let edge = _mm512_set1_pd(edge);
+    fn one_edge(edge: f64, row: &[f64; LANES], scale: f64) -> u64 {
+        let (edge, scale) = (_mm512_set1_pd(edge), _mm512_set1_pd(scale));
         let mut count = 0;
         for index in 0..LANES / 8 {
             let scaled = _mm512_mul_pd(value(row, index), scale);
@@ -578,18 +680,108 @@ mod tests {
         row
     }
 
+    fn agree(sieve: &Sieve, row: &Row, scale: f64) {
+        for count in [LANES, 0, 1, 7, 255] {
+            let (mut fast, mut plain) = (sieve.nothing(0), sieve.nothing(0));
+            for _ in 0..2 {
+                sieve.sift(row, scale, count, &mut fast);
+                sieve.sift_plain(row, scale, count, &mut plain);
+            }
+            assert_eq!(fast, plain, "{count} lanes through {sieve:?}");
+        }
+    }
+
     #[test]
     fn the_kernel_and_its_twin_agree() {
-        let sieve =
-            Sieve::wide(&[(0.1, 0.5), (1.0, 1.0 + 1e-9), (2.0, f64::INFINITY)], &[0.0, 2.0, 2.0f64.next_up(), 3.3]);
-        for seed in 0..200 {
-            for count in [LANES, 0, 1, 7, 255] {
-                let row = row(seed);
-                let (mut fast, mut plain) = (sieve.nothing(0), sieve.nothing(0));
-                sieve.sift(&row, 1.25, count, &mut fast);
-                sieve.sift_plain(&row, 1.25, count, &mut plain);
-                assert_eq!(fast, plain, "seed {seed}, {count} lanes");
+        const OPEN: f64 = f64::INFINITY;
+        let brackets: [&[(f64, f64)]; 7] = [
+            &[(0.1, 0.5), (1.0, 1.0 + 1e-9), (2.0, OPEN)],
+            &[(0.0, OPEN)],
+            &[(0.0, 0.3), (2.0, 2.0), (2.1, 2.5)],
+            &[(0.0, 0.0), (1e-300, 1e-9), (1.0, 2.0)],
+            &[(0.3, 0.31), (0.5, 0.51), (0.7, 0.71), (0.9, 0.91), (1.1, 1.11), (1.3, 1.31), (1.5, 3.0), (4.0, 5.0)],
+            &[(1.9, 1.99), (1.991, 2.0), (2.00001, 2.1)],
+            &[],
+        ];
+        let edges: [&[f64]; 6] = [
+            &[],
+            &[2.0, 2.0f64.next_up()],
+            &[2.5, 2.5f64.next_down(), 3.3],
+            &[f64::NEG_INFINITY, f64::NAN],
+            &[0.0, -0.0, -1.0, 1e-200, OPEN],
+            &[1e-310, 1e300],
+        ];
+        for brackets in brackets {
+            for edges in edges {
+                let sieve = Sieve::wide(brackets, edges);
+                for seed in 0..20 {
+                    let mut row = row(seed);
+                    agree(&sieve, &row, 1.25);
+                    row.0[(11 * seed) as usize] = OPEN;
+                    row.0[(11 * seed + 1) as usize] = f64::MAX;
+                    agree(&sieve, &row, 1.0);
+                }
             }
+        }
+    }
+
+    #[test]
+    fn a_list_is_sifted_like_its_rows() {
+        let values: Vec<f64> = (0..5).flat_map(|seed| row(seed).0).collect();
+        for sieve in [Sieve::wide(&[(0.1, 0.5), (1.0, 2.1)], &[]), Sieve::exact(&[(-0.5, 0.1), (1.0, 1.5)], &[])] {
+            for part in [&values[..0], &values[1..8], &values[3..259], &values[..512], &values[5..]] {
+                let mut kept = sieve.nothing(0);
+                sieve.sift_list(&values, &mut kept);
+                sieve.empty(&mut kept);
+                sieve.sift_list(part, &mut kept);
+                let within = |value: f64| sieve.brackets().iter().any(|&(low, high)| value >= low && value < high);
+                assert_eq!(kept.values, part.iter().copied().filter(|&value| within(value)).collect::<Vec<_>>());
+                for (&(low, high), (from, inside)) in
+                    sieve.brackets().iter().zip(kept.from_bracket.iter().zip(&kept.in_bracket))
+                {
+                    assert_eq!(*from, part.iter().filter(|&&value| value >= low).count() as u64);
+                    assert_eq!(*inside, part.iter().filter(|&&value| value >= low && value < high).count() as u64);
+                }
+            }
+        }
+    }
+
+    #[test]
+    fn rows_of_one_number_and_its_neighbours() {
+        let sieve = Sieve::wide(&[(1.0, 1.5), (1.7, 2.0), (2.5, 3.0)], &[1.7, 1.7f64.next_up(), 2.0, 2.0f64.next_up()]);
+        let ends = sieve.brackets().iter().flat_map(|&(low, high)| [low, high]).chain([1.7, 2.0]);
+        for end in ends {
+            for value in [end.next_down(), end, end.next_up()] {
+                let mut row = Row::ZERO;
+                row.0[..200].fill(value);
+                agree(&sieve, &row, 1.0);
+            }
+        }
+    }
+
+    #[test]
+    fn brackets_become_a_little_wider_and_join() {
+        let given = [(0.0, 0.1), (0.4, 0.5), (0.5, 0.7), (1.0, f64::INFINITY)];
+        let expected = [(0.0, 0.1), (0.4, 0.7), (1.0, f64::INFINITY)];
+        for edges in [&[] as &[f64], &[0.25, 40.0], &[1e-30, 1e30]] {
+            let sieve = Sieve::wide(&given, edges);
+            assert_eq!(sieve.brackets().len(), expected.len());
+            for (&(low, high), (least, most)) in sieve.brackets().iter().zip(expected) {
+                assert!(low <= least && low >= least * (1.0 - 2.5e-4), "{low} for {least}");
+                assert!(high >= most && high <= most * (1.0 + 2.5e-4), "{high} for {most}");
+            }
+        }
+    }
+
+    #[cfg(target_arch = "x86_64")]
+    #[test]
+    fn lanes_are_listed_in_order() {
+        for bits in [[0; 4], [u64::MAX; 4], [1, 0, 1 << 63, 0x8001_0000_f00f_0000]] {
+            let mut lanes = [0; LANES + 64];
+            let count = plain::list(&bits, &mut lanes);
+            let expected: Vec<u8> =
+                (0..=255u8).filter(|&lane| bits[usize::from(lane / 64)] >> (lane % 64) & 1 == 1).collect();
+            assert_eq!(lanes[..count], expected);
         }
     }
 
