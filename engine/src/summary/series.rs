@@ -151,3 +151,64 @@ pub enum Found {
     /// The bracket was missed; it lies here.
     Between(f64, f64, u64),
 }
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::math::{LANES, Row};
+
+    /// Thousand lots of values from 0 to 10, some of them equal.
+    fn rows() -> Vec<Row> {
+        let mut state = 17u64;
+        let mut row = || {
+            let mut row = Row::ZERO;
+            for lane in row.iter_mut() {
+                state = state.wrapping_mul(6_364_136_223_846_793_005).wrapping_add(1_442_695_040_888_963_407);
+                *lane = if state >> 62 == 0 { 4.0 } else { (state >> 11) as f64 / (1u64 << 53) as f64 * 10.0 };
+            }
+            row
+        };
+        (0..20).map(|_| row()).collect()
+    }
+
+    fn pass(search: &Search, rows: &[Row]) -> Kept {
+        let mut kept = search.sieve().nothing(0);
+        for row in rows {
+            search.sieve().sift(row, 1.0, LANES, &mut kept);
+        }
+        kept
+    }
+
+    #[test]
+    fn a_missed_order_statistic_is_found_where_the_counts_say() {
+        let rows = rows();
+        let patients = (rows.len() * LANES) as u64;
+        let mut sorted: Vec<f64> = rows.iter().flat_map(|row| row.0).collect();
+        sorted.sort_by(f64::total_cmp);
+        let ranks: Vec<u64> = (0..patients).step_by(331).collect();
+        // Two places that hold next to nothing of what is wanted, one of them a point.
+        for first in [vec![Place::Between(9.0, 9.1)], vec![Place::Between(1.0, 2.0), Place::At(4.0)], Vec::new()] {
+            let search = Search::new(&first, Some(WindowEdges::new(Some(2.0), Some(8.0))), false, 0.1);
+            let kept = pass(&search, &rows);
+            let below = sorted.iter().filter(|&&value| value < 2.0).count() as u64;
+            let above = sorted.iter().filter(|&&value| value > 8.0).count() as u64;
+            assert_eq!(search.parts(patients, &[&kept]), Some([below, patients - below - above, above]));
+            let found = search.find(patients, &[&kept], &ranks, &mut Scratch::default());
+            assert!(found.iter().any(|found| matches!(found, Found::Between(..))), "{first:?} misses something");
+            for (found, &rank) in found.iter().zip(&ranks) {
+                let truth = sorted[rank as usize];
+                match *found {
+                    Found::Value(value) => assert_eq!(value, truth),
+                    Found::Between(low, high, count) => {
+                        assert!(low <= truth && (truth < high || high == f64::INFINITY), "{rank} in {low} to {high}");
+                        let again = Search::new(&[Place::Between(low.max(0.0), high)], None, false, 1.0);
+                        let kept = pass(&again, &rows);
+                        assert!(kept.kept() as u64 >= count);
+                        let found = again.find(patients, &[&kept], &[rank], &mut Scratch::default());
+                        assert_eq!(found, [Found::Value(truth)], "rank {rank} in one more pass");
+                    }
+                }
+            }
+        }
+    }
+}
