@@ -4,7 +4,7 @@
 
 use multiversion::multiversion;
 
-use crate::math::{Row, exp, exp_row, ln, normal_cdf, normal_quantile_row};
+use crate::math::{Row, exp, exp_row, ln, normal_cdf, normal_quantile_row, triangular_cdf, triangular_quantile};
 use crate::scenario::{Distribution, Limited};
 
 /// A distribution within its limits, ready to transform uniforms.
@@ -137,19 +137,6 @@ impl Sampler {
     }
 }
 
-/// Distribution function of the triangular distribution.
-pub(super) fn triangular_cdf(from: f64, mode: f64, to: f64, x: f64) -> f64 {
-    if x <= from {
-        0.0
-    } else if x >= to {
-        1.0
-    } else if x <= mode {
-        (x - from) * (x - from) / ((to - from) * (mode - from))
-    } else {
-        1.0 - (to - x) * (to - x) / ((to - from) * (to - mode))
-    }
-}
-
 /// The logarithm of the median times the exponential of the spread: used where a scalar is wanted.
 pub(super) fn lognormal_value(median: f64, log_sd: f64, deviate: f64) -> f64 {
     exp(log_sd * deviate) * median
@@ -173,11 +160,7 @@ fn clamp(row: &mut Row, low: f64, high: f64) {
 
 #[multiversion(targets("x86_64+avx512f+avx512bw+avx512dq+avx512vl", "x86_64+avx2"))]
 fn triangular(row: &mut Row, from: f64, mode: f64, to: f64) {
-    let at_mode = (mode - from) / (to - from);
     for lane in &mut row.0 {
-        let u = *lane;
-        let rising = from + (u * (to - from) * (mode - from)).sqrt();
-        let falling = to - ((1.0 - u) * (to - from) * (to - mode)).sqrt();
-        *lane = if u < at_mode { rising } else { falling };
+        *lane = triangular_quantile(from, mode, to, *lane);
     }
 }

@@ -1,7 +1,7 @@
 //! What a distribution within its limits should show: mean, standard deviation, percentiles, in closed form.
 
-use super::distribution::{Tail, lognormal_value, triangular_cdf};
-use crate::math::{exp, falling1, ln, normal_cdf};
+use super::distribution::{Tail, lognormal_value};
+use crate::math::{exp, falling1, ln, normal_between, triangular_cdf, triangular_quantile};
 use crate::scenario::{Covariate, Distribution, Limited, Spread};
 
 /// What a quantity should show, limits included.
@@ -80,11 +80,7 @@ pub fn quantile(limited: &Limited, p: f64) -> f64 {
         Distribution::Triangular { from, mode, to } => {
             let start = triangular_cdf(from, mode, to, low);
             let u = start + p * (triangular_cdf(from, mode, to, high) - start);
-            if u < (mode - from) / (to - from) {
-                from + (u * (to - from) * (mode - from)).sqrt()
-            } else {
-                to - ((1.0 - u) * (to - from) * (to - mode)).sqrt()
-            }
+            triangular_quantile(from, mode, to, u)
         }
     };
     value.clamp(low, high)
@@ -96,11 +92,6 @@ fn log_limits(median: f64, log_sd: f64, low: f64, high: f64) -> (f64, f64) {
     (a, b)
 }
 
-/// Probability between two standard normal deviates, without cancelling in the upper tail.
-fn between(a: f64, b: f64) -> f64 {
-    if a > 0.0 { normal_cdf(-a) - normal_cdf(-b) } else { normal_cdf(b) - normal_cdf(a) }
-}
-
 /// Standard normal density, zero at the infinities.
 fn density(z: f64) -> f64 {
     exp(-0.5 * z * z) * 0.398_942_280_401_432_7
@@ -109,7 +100,7 @@ fn density(z: f64) -> f64 {
 /// Mean and standard deviation of the standard normal between `a` and `b` (Johnson, Kotz, Balakrishnan 1994, section
 /// 13.10.1; from memory).
 fn truncated_normal(a: f64, b: f64) -> (f64, f64) {
-    let mass = between(a, b);
+    let mass = normal_between(a, b);
     let (at_a, at_b) = (density(a), density(b));
     let mean = (at_a - at_b) / mass;
     let edge = |z: f64, d: f64| if z.is_finite() { z * d } else { 0.0 };
@@ -121,14 +112,14 @@ fn truncated_normal(a: f64, b: f64) -> (f64, f64) {
 /// P(a < Z < b)`.
 fn truncated_lognormal(median: f64, log_sd: f64, low: f64, high: f64) -> (f64, f64) {
     let (a, b) = log_limits(median, log_sd, low, high);
-    let mass = between(a, b);
+    let mass = normal_between(a, b);
     let square = log_sd * log_sd;
     if a == f64::NEG_INFINITY && b == f64::INFINITY {
         // exp(s^2) - 1 = s^2 exp(s^2) (1 - exp(-s^2)) / s^2, which does not cancel where the spread is small.
         return (median * exp(0.5 * square), median * exp(square) * log_sd * falling1(square).sqrt());
     }
-    let mean = median * exp(0.5 * square) * between(a - log_sd, b - log_sd) / mass;
-    let second = median * median * exp(2.0 * square) * between(a - 2.0 * log_sd, b - 2.0 * log_sd) / mass;
+    let mean = median * exp(0.5 * square) * normal_between(a - log_sd, b - log_sd) / mass;
+    let second = median * median * exp(2.0 * square) * normal_between(a - 2.0 * log_sd, b - 2.0 * log_sd) / mass;
     (mean, (second - mean * mean).max(0.0).sqrt())
 }
 

@@ -87,6 +87,13 @@ fn ln_lanes(lanes: &mut [f64; LANES]) {
     }
 }
 
+/// `ln(1 + x)` for `x` not below 0, without losing the digits of a small one to the 1 (Kahan's correction for the rounding of
+/// the sum; from memory).
+pub fn ln_one_plus(x: f64) -> f64 {
+    let sum = 1.0 + x;
+    if sum == 1.0 { x } else { ln(sum) * (x / (sum - 1.0)) }
+}
+
 #[cfg(test)]
 mod tests {
     use super::super::reference::{assert_same_bits, assert_within};

@@ -12,14 +12,16 @@ mod normal;
 mod reference;
 mod row;
 mod sum;
+mod triangular;
 
 pub use exp::{decay, exp, exp_row};
 pub use falling::{convolved2, convolved3, convolved4, exp_and_falling1, falling1, falling2, falling3};
 pub use kernel::{Kept, Sieve, chunk_for};
-pub use ln::{ln, ln_row};
-pub use normal::{normal_cdf, normal_quantile, normal_quantile_row, normal_upper_tail};
+pub use ln::{ln, ln_one_plus, ln_row};
+pub use normal::{normal_between, normal_cdf, normal_quantile, normal_quantile_row, normal_upper_tail};
 pub use row::{LANES, Row};
 pub use sum::{ExactSum, SUM_WORDS};
+pub use triangular::{triangular_cdf, triangular_quantile};
 
 #[cfg(test)]
 mod tests {

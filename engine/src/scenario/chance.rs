@@ -1,7 +1,7 @@
 //! How much of a distribution its limits hold, and where its values lie: what checking needs and no more.
 
-use super::portable::{exp, ln, normal_cdf};
 use super::{Distribution, Limited};
+use crate::math::{exp, ln, normal_between, triangular_cdf};
 
 /// Limits that hold less than this share of a distribution are refused.
 pub(super) const LEAST_HELD: f64 = 1e-6;
@@ -23,7 +23,7 @@ impl Limited {
                 part(high) - part(low)
             }
             Distribution::Triangular { from, mode, to } => {
-                triangular_cdf(high, from, mode, to) - triangular_cdf(low, from, mode, to)
+                triangular_cdf(from, mode, to, high) - triangular_cdf(from, mode, to, low)
             }
             Distribution::Fixed { value } => f64::from(u8::from(low <= value && value <= high)),
         }
@@ -54,23 +54,6 @@ impl Limited {
     /// Whether every value is above zero. A log-normal's are, although zero bounds them.
     pub(super) fn positive(&self) -> bool {
         matches!(self.distribution, Distribution::Lognormal { .. }) || self.support().0 > 0.0
-    }
-}
-
-/// The normal probability of an interval; in the upper half from the upper tail, where the difference keeps its digits.
-pub(super) fn normal_between(a: f64, b: f64) -> f64 {
-    if a > 0.0 { normal_cdf(-a) - normal_cdf(-b) } else { normal_cdf(b) - normal_cdf(a) }
-}
-
-fn triangular_cdf(x: f64, from: f64, mode: f64, to: f64) -> f64 {
-    if x <= from {
-        0.0
-    } else if x >= to {
-        1.0
-    } else if x <= mode {
-        (x - from) * (x - from) / ((to - from) * (mode - from))
-    } else {
-        1.0 - (to - x) * (to - x) / ((to - from) * (to - mode))
     }
 }
 

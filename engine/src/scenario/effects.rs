@@ -4,11 +4,11 @@ use super::covariates::with_near;
 use super::measure::Wants;
 use super::nearest::nearest;
 use super::population::Covariates;
-use super::portable::{exp, ln};
 use super::reader::{Reader, Section};
 use super::roles::Kind;
 use super::{Additive, Covariate, Factor, Limited, Parameter, Spread};
 use crate::diagnostic::{Diagnostic, Span};
+use crate::math::{exp, ln};
 use crate::quantity::{Dimension, Unit, to_f64};
 
 /// No power is higher.

@@ -19,7 +19,6 @@ mod nearest;
 mod output;
 mod parameters;
 mod population;
-mod portable;
 mod read;
 mod reader;
 mod roles;

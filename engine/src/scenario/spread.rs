@@ -4,11 +4,14 @@
 use super::chance::LEAST_HELD;
 use super::covariates::{Frame, one_of, only};
 use super::measure::Measured;
-use super::portable::{NORMAL_95, ln, ln_one_plus};
 use super::reader::{Reader, Section};
 use super::{Distribution, Limited};
 use crate::diagnostic::{Diagnostic, Span};
+use crate::math::{exp, ln, ln_one_plus};
 use crate::quantity::to_f64;
+
+/// The 95th percentile of the standard normal distribution.
+const NORMAL_95: f64 = 1.644_853_626_951_472_7;
 
 /// No spread of a logarithm is larger: people one standard deviation apart would differ twenty-thousandfold.
 pub(super) const LARGEST_LOG_SD: f64 = 10.0;
@@ -194,7 +197,7 @@ fn lognormal(reader: &mut Reader, section: &Section, frame: &mut Frame) -> Optio
         }
     };
     let value = value?;
-    let median = if of_mean { value * super::portable::exp(-0.5 * log_variance) } else { value };
+    let median = if of_mean { value * exp(-0.5 * log_variance) } else { value };
     let log_sd = log_variance.sqrt();
     if log_sd == 0.0 {
         return Some(Distribution::Fixed { value });

@@ -1,13 +1,13 @@
 //! Reads how a parameter varies between subjects, and the limits of its individual values.
 
-use super::chance::{LEAST_HELD, normal_between};
+use super::chance::LEAST_HELD;
 use super::measure::{Wants, beyond};
-use super::portable::{ln, ln_one_plus};
 use super::reader::{Reader, Section};
 use super::roles::Kind;
 use super::spread::{LARGEST_LOG_SD, exactly_one, limits as bounds};
 use super::{Role, Varies};
 use crate::diagnostic::{Diagnostic, Span};
+use crate::math::{ln, ln_one_plus, normal_between};
 use crate::quantity::to_f64;
 
 /// The keys that say how much a parameter varies.
