@@ -9,6 +9,9 @@ use crate::math::{Kept, Sieve};
 /// So few values are ordered as they are.
 const SMALL: usize = 1024;
 
+/// Up to so many values are brought together first.
+const JOINED: usize = 1 << 15;
+
 /// How often values are narrowed at most.
 const STEPS: usize = 4;
 
@@ -23,6 +26,7 @@ const BEND: f64 = 0.1;
 pub struct Scratch {
     kept: Kept,
     before: Kept,
+    all: Vec<f64>,
     keys: Vec<u64>,
 }
 
@@ -55,6 +59,16 @@ pub(super) fn select(
     found: &mut impl FnMut(usize, f64),
 ) {
     if wanted.is_empty() {
+        return;
+    }
+    let total: usize = lists.iter().map(|list| list.len()).sum();
+    if total <= JOINED && lists.len() > 1 {
+        // Many short lists are mostly remainders, which are sifted one by one.
+        let mut all = std::mem::take(&mut scratch.all);
+        all.clear();
+        lists.iter().for_each(|list| all.extend_from_slice(list));
+        select(&[&all], kind, spans, wanted, scratch, found);
+        scratch.all = all;
         return;
     }
     let mut missed = Vec::new();
