@@ -50,8 +50,8 @@ impl Track {
         self.folds[index].is_empty()
             && !self.lagged[pending.min(self.lagged.len())..]
                 .iter()
-                .take_while(|&&dose| dose + shortest <= times[index])
-                .any(|&dose| dose + longest > before)
+                .take_while(|&&dose| shortest <= times[index] - dose)
+                .any(|&dose| longest > before - dose)
     }
 }
 

@@ -10,6 +10,9 @@ use crate::draw::Stream;
 use crate::math::{LANES, Row, exp, exp_row, ln, ln_row, normal_cdf, normal_quantile, normal_quantile_row};
 use crate::scenario::{Drug, Factor, Parameter, Role, Scenario, Varies};
 
+/// No parameter is larger, and no volume smaller than its inverse: squares of rates, and concentrations, stay finite.
+const FARTHEST: f64 = 1e75;
+
 /// Draws the parameters of any block of patients.
 #[derive(Debug)]
 pub struct Individuals {
@@ -112,17 +115,17 @@ impl Individuals {
         }
     }
 
-    /// The first of the first `count` lanes with a parameter that no body can have: below zero, a volume of zero, or not a finite
-    /// number; and which parameter it is.
+    /// The first of the first `count` lanes with a parameter that no body can have: below zero, a volume of zero, or so far out that
+    /// what is made of it would be no number; and which parameter it is.
     pub fn impossible(&self, rows: &[Row], count: usize) -> Option<Impossible> {
         let mut first: Option<Impossible> = None;
         for (parameter, row) in self.parameters.iter().zip(rows) {
-            let least = if parameter.role.is_volume() { f64::MIN_POSITIVE } else { 0.0 };
+            let least = if parameter.role.is_volume() { 1.0 / FARTHEST } else { 0.0 };
             if within(row, least) {
                 continue;
             }
             let lanes = &row[..count.min(first.map_or(LANES, |found| found.lane))];
-            if let Some(lane) = lanes.iter().position(|value| !(least..=f64::MAX).contains(value)) {
+            if let Some(lane) = lanes.iter().position(|value| !(least..=FARTHEST).contains(value)) {
                 first = Some(Impossible { lane, role: parameter.role, value: row[lane] });
             }
         }
@@ -192,7 +195,7 @@ pub struct Impossible {
     pub value: f64,
 }
 
-/// Whether all lanes are finite and at least `least`, which is not negative: their bits order as they do, and those of negative
+/// Whether all lanes lie between `least`, which is not negative, and [`FARTHEST`]: their bits order as they do, and those of negative
 /// values, infinities and what is not a number lie above.
 #[multiversion(targets("x86_64+avx512f+avx512bw+avx512dq+avx512vl", "x86_64+avx2"))]
 fn within(row: &Row, least: f64) -> bool {
@@ -201,11 +204,15 @@ fn within(row: &Row, least: f64) -> bool {
         let above = value.to_bits().wrapping_sub(least.to_bits());
         most = if above > most { above } else { most };
     }
-    most <= f64::MAX.to_bits() - least.to_bits()
+    most <= FARTHEST.to_bits() - least.to_bits()
 }
 
-/// One value of a parameter whose random part needs more than an exponential, limits by inversion.
+/// One value of a parameter whose random part needs more than an exponential, limits by inversion. Where covariates have led
+/// below zero, or to no number, no limit mends it: that value is handed on, to be refused.
 fn individual(varies: Varies, base: f64, random: f64, low: f64, high: f64) -> f64 {
+    if base.is_nan() || base < 0.0 {
+        return base;
+    }
     let inside = |a: f64, b: f64| {
         if a == f64::NEG_INFINITY && b == f64::INFINITY { random } else { squeeze(random, a, b) }
     };
@@ -255,8 +262,17 @@ fn individual(varies: Varies, base: f64, random: f64, low: f64, high: f64) -> f6
     }
 }
 
+/// Limits that lie farther out than this, in standard deviations, hold too little for a probability to tell.
+const FAR_OUT: f64 = 36.0;
+
 /// Moves a standard normal deviate into the part of the distribution between `a` and `b`, keeping its rank.
 fn squeeze(random: f64, a: f64, b: f64) -> f64 {
+    if a > FAR_OUT {
+        return far_out(normal_cdf(-random), a, b);
+    }
+    if b < -FAR_OUT {
+        return -far_out(normal_cdf(random), -b, -a);
+    }
     if a > 0.0 || (random > 0.0 && b >= 0.0) {
         // Seen from the upper tail, where probabilities are small numbers and therefore exact.
         let (far, near) = (normal_cdf(-b), normal_cdf(-a));
@@ -265,6 +281,16 @@ fn squeeze(random: f64, a: f64, b: f64) -> f64 {
         let (start, end) = (normal_cdf(a), normal_cdf(b));
         normal_quantile(start + (end - start) * normal_cdf(random))
     }
+}
+
+/// The deviate between `a`, which is far out, and `b` above which the share `above` of that part lies.
+///
+/// Out there a probability is its density over its deviate, and the deviate hardly changes where anything is left: the part
+/// of what lies beyond `a` that lies beyond `z` is `exp((a^2 - z^2) / 2)`, to one part in `a^2`.
+fn far_out(above: f64, a: f64, b: f64) -> f64 {
+    let beyond = exp(0.5 * (a - b) * (a + b));
+    let z = (a * a - 2.0 * ln(above + (1.0 - above) * beyond)).sqrt();
+    if z < b { z } else { b }
 }
 
 /// Cholesky factor of the correlation matrix, one row a parameter; entries that are zero are left out.
@@ -301,5 +327,47 @@ fn add_shifted(sum: &mut Row, row: &Row, origin: f64, weight: f64) {
 fn multiply(one: &Row, other: &Row, product: &mut Row) {
     for (product, (one, other)) in product.0.iter_mut().zip(one.0.iter().zip(&other.0)) {
         *product = *one * *other;
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    /// Far outside the limits the value stands at the nearer one, and keeps its rank.
+    #[test]
+    fn limits_far_from_the_typical_value_hold_near_the_nearer_one() {
+        let lognormal = Varies::Lognormal { log_sd: 0.001 };
+        let normal = Varies::Normal { cv: 0.001 };
+        for varies in [lognormal, normal] {
+            for base in [1.0, 4.0, 4.7, 4.82, 4.84, 4.9] {
+                let values = [-3.0, -1.0, 0.0, 1.0, 3.0].map(|random| individual(varies, base, random, 4.9, 20.0));
+                assert!(values.is_sorted() && values[0] >= 4.9 && values[4] < 4.93, "{varies:?} {base}: {values:?}");
+            }
+            for base in [40.0, 20.9, 20.8, 20.7, 20.1] {
+                let values = [-3.0, -1.0, 0.0, 1.0, 3.0].map(|random| individual(varies, base, random, 4.9, 20.0));
+                assert!(values.is_sorted() && values[0] > 19.8 && values[4] <= 20.0, "{varies:?} {base}: {values:?}");
+            }
+        }
+    }
+
+    /// Both ways to reach far out agree where they meet: what is dropped there is one part in `a^2` of the way past the limit.
+    #[test]
+    fn the_far_tail_joins_the_near_one() {
+        let a = FAR_OUT;
+        for random in [-3.0, -1.0, 0.0, 1.0, 3.0] {
+            for b in [f64::INFINITY, a + 0.05] {
+                let (near, far) = (squeeze(random, a, b), far_out(normal_cdf(-random), a, b));
+                assert!((near - far).abs() <= 2.0 / (a * a) * (near - a), "{random} {b}: {near} {far}");
+                assert_eq!(squeeze(-random, -b, -a), -near);
+            }
+        }
+    }
+
+    #[test]
+    fn what_covariates_made_negative_is_not_mended_by_limits() {
+        for varies in [Varies::Not, Varies::Lognormal { log_sd: 0.3 }, Varies::Normal { cv: 0.3 }] {
+            assert_eq!(individual(varies, -1.0, 0.5, 1.0, 2.0), -1.0, "{varies:?}");
+        }
     }
 }

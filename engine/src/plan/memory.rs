@@ -19,6 +19,12 @@ const MARGIN: f64 = 1.1;
 /// Bytes a series takes beside its kept values: counts and headers, for one worker.
 const SERIES_BYTES: u64 = 512;
 
+/// Bytes that come into memory together.
+const PAGE: u64 = 4096;
+
+/// Bytes a series takes from the beginning to the tables: what is looked for, what was found, its rows.
+const ANSWER_BYTES: u64 = 1024;
+
 /// What the process takes before it keeps anything: code, tables on their way out, the allocator's own.
 const PROCESS_BYTES: u64 = 24 << 20;
 
@@ -34,9 +40,13 @@ pub fn tiles(shares: &[f64], patients: u64, threads: usize, budget: u64) -> Vec<
     let (mut start, mut filled) = (0, 0.0);
     for (index, share) in shares.iter().enumerate() {
         let expected = share * patients as f64;
-        // Each worker's last chunk is half empty on average.
-        let chunk = chunk_for((expected / threads as f64) as usize) as u64;
-        let bytes = expected * 8.0 * MARGIN + (threads as u64 * (4 * chunk + SERIES_BYTES)) as f64;
+        let lanes = chunk_for((expected / threads as f64) as usize);
+        // A chunk is full when it has no room for another block. Each worker's last one is half empty on average; a small one takes
+        // its place in memory all the same.
+        let full = lanes as f64 / (lanes - LANES) as f64;
+        let chunk = 8 * lanes as u64;
+        let bytes = expected * 8.0 * MARGIN * full
+            + (threads as u64 * ((chunk / 2).max(chunk.min(PAGE)) + SERIES_BYTES)) as f64;
         if index > start && filled + bytes > budget as f64 {
             out.push(start..index);
             (start, filled) = (index, 0.0);
@@ -59,12 +69,12 @@ impl Plan {
 
     /// Bytes left for kept values.
     pub fn budget(&self) -> u64 {
-        self.limits().memory.saturating_sub(self.block_bytes() + PROCESS_BYTES)
+        self.limits().memory.saturating_sub(self.block_bytes() + PROCESS_BYTES + self.signals() as u64 * ANSWER_BYTES)
     }
 
     /// The least that a run of this plan works in: blocks, every series' order statistics, and one tile of some size.
     pub(super) fn least_memory(&self) -> u64 {
-        PROCESS_BYTES + self.block_bytes() + self.signals() as u64 * 1024 + (4 << 20)
+        PROCESS_BYTES + self.block_bytes() + self.signals() as u64 * ANSWER_BYTES + (4 << 20)
     }
 }
 

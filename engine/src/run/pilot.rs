@@ -1,5 +1,7 @@
 //! A small run of the first patients, to know where to look in the large one. It decides how fast the answer comes, not what it is.
 
+use std::ops::Range;
+
 use super::Watch;
 use super::pass::pass;
 use super::worker::{Clock, Sink, Worker};
@@ -22,26 +24,18 @@ pub(super) fn searches(
     quantities: &[Ranks],
     watch: &Watch,
 ) -> Result<(Vec<Search>, Vec<Search>), Fault> {
-    let mut sample = Sample::new(plan);
-    Worker::new(plan).block(&mut sample, 0, LANES, plan.timetable.times.len(), None);
-    for values in &mut sample.signals {
-        values.sort_unstable_by(f64::total_cmp);
-    }
     let pilot = Pilot::new(signals, patients, size);
     let mut found = Vec::with_capacity(plan.signals());
     // As many series at a time as histograms fit into half the budget.
-    let bytes = (CELLS * size_of::<u32>() * plan.limits().threads) as u64;
+    let bytes = (CELLS * size_of::<u32>() * plan.limits().threads + LANES * size_of::<f64>()) as u64;
     let at_a_time = (plan.budget() / 2 / bytes).max(1) as usize;
-    for (round, samples) in sample.signals.chunks(at_a_time).enumerate() {
-        let first = round * at_a_time;
+    let (series, times) = (plan.signals(), plan.timetable.times.len());
+    for first in (0..series).step_by(at_a_time) {
+        let range = first..series.min(first + at_a_time);
+        let until = if range.len() >= times { times } else { range.clone().map(|s| s % times + 1).max().unwrap_or(0) };
+        let samples = sample(plan, range, until);
         let cells: Vec<Cells> = samples.iter().map(|sample| Cells::covering(sample)).collect();
         let needed: Vec<bool> = samples.iter().map(|sample| sample.first() != sample.last()).collect();
-        let times = plan.timetable.times.len();
-        let until = if samples.len() >= times {
-            times
-        } else {
-            (first..first + samples.len()).map(|s| s % times + 1).max().unwrap_or(0)
-        };
         watch.expect(size);
         let prepare =
             || Count { first, cells: &cells, needed: &needed, histograms: vec![0; CELLS * samples.len()], lanes: 0 };
@@ -79,26 +73,31 @@ fn population(plan: &Plan, patients: u64) -> Vec<Vec<f64>> {
     values
 }
 
-/// Every concentration of one block.
-struct Sample {
-    signals: Vec<Vec<f64>>,
+/// Sorted values of some series among the patients of the first block.
+fn sample(plan: &Plan, series: Range<usize>, until: usize) -> Vec<Vec<f64>> {
+    let mut sample = Sample { first: series.start, signals: vec![Vec::new(); series.len()] };
+    Worker::new(plan).block(&mut sample, 0, LANES, until, None);
+    for values in &mut sample.signals {
+        values.sort_unstable_by(f64::total_cmp);
+    }
+    sample.signals
 }
 
-impl Sample {
-    fn new(plan: &Plan) -> Self {
-        Self { signals: vec![Vec::new(); plan.signals()] }
-    }
+/// Concentrations of one block, from the series `first` on.
+struct Sample {
+    first: usize,
+    signals: Vec<Vec<f64>>,
 }
 
 impl Sink for Sample {
     fn population(&mut self, _: &[Row], _: &[Row]) {}
 
-    fn wants(&self, _: usize) -> bool {
-        true
+    fn wants(&self, series: usize) -> bool {
+        (self.first..self.first + self.signals.len()).contains(&series)
     }
 
     fn signal(&mut self, series: usize, row: &Row, scale: f64) {
-        self.signals[series].extend(row.iter().map(|value| value * scale));
+        self.signals[series - self.first].extend(row.iter().map(|value| value * scale));
     }
 }
 

@@ -131,8 +131,8 @@ pub(super) fn resolve(plan: &Plan, patients: u64, wanted: &Wanted<'_>, watch: &W
             watch.enter(Stage::Selecting);
             let start = Instant::now();
             let offset = plan.signals();
-            select(&partials, patients, &mut signals, 0, Some(&round), &mut answer.signals);
-            select(&partials, patients, &mut quantities, offset, None, &mut answer.quantities);
+            select(&partials, patients, &mut signals, 0, Some(&round), &mut answer.signals)?;
+            select(&partials, patients, &mut quantities, offset, None, &mut answer.quantities)?;
             if with_moments {
                 answer.moments = moments(partials);
             }
@@ -176,7 +176,9 @@ fn aims(
     (Aims { searches, signals: signals.len(), centres: centres.to_vec() }, until)
 }
 
-/// Finds what a pass has kept; quests that are done become `None`, missed ones get a new place to look.
+/// Finds what a pass has kept; quests that are done become `None`, missed ones get a new place to look. A place that is looked
+/// at for the second time holds what is looked for, unless values are no numbers: that ends the run, which would else go on for
+/// ever.
 fn select(
     partials: &[Partial],
     patients: u64,
@@ -184,23 +186,31 @@ fn select(
     offset: usize,
     round: Option<&[usize]>,
     answers: &mut [Series],
-) {
-    quests.par_iter_mut().zip(answers.par_iter_mut()).enumerate().for_each_init(
+) -> Result<(), Fault> {
+    quests.par_iter_mut().zip(answers.par_iter_mut()).enumerate().try_for_each_init(
         Scratch::default,
         |scratch, (index, (slot, answer))| {
             if round.is_some_and(|round| round.binary_search(&index).is_err()) {
-                return;
+                return Ok(());
             }
-            let Some(quest) = slot else { return };
+            let Some(quest) = slot else { return Ok(()) };
             let kept: Vec<&Kept> = partials.iter().map(|partial| &partial.kept[offset + index]).collect();
             if quest.first {
                 answer.parts = quest.search.parts(patients, &kept);
                 answer.tally = quest.search.tally(&kept);
             }
             let found = quest.search.find(patients, &kept, &quest.ranks, scratch);
-            *slot = quest.missed(&found, answer, patients, offset > 0);
+            let again = quest.missed(&found, answer, patients, offset > 0);
+            if again.is_some() && !quest.first {
+                return Err(Fault::Refused {
+                    message: "some patients' values are beyond what can be reckoned with".to_owned(),
+                    help: "bring amounts, volumes and rates into a sensible range".to_owned(),
+                });
+            }
+            *slot = again;
+            Ok(())
         },
-    );
+    )
 }
 
 impl Quest {
@@ -226,7 +236,8 @@ impl Quest {
             return None;
         }
         let places: Vec<Place> = places.iter().map(|&(low, high)| Place::Between(low, high)).collect();
-        let search = Search::new(&places, None, signed, count as f64 / patients as f64);
+        // Never widened: just outside may stand the ties of almost everyone.
+        let search = Search::new(&places, None, true, count as f64 / patients as f64);
         Some(Self { search, ranks, slots, first: false })
     }
 }

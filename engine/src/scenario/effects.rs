@@ -81,6 +81,7 @@ fn factor(reader: &mut Reader, section: &Section, covariates: &mut Covariates) -
     let forms: Vec<_> = FORMS.iter().filter(|(_, tell, _)| tell.iter().any(|key| section.has(key))).collect();
     let (name, _, keys) = match forms[..] {
         [form] => form,
+        [] if FORMS.iter().flat_map(|(_, tell, _)| *tell).any(|key| section.meant(key)) => return None,
         [] => {
             let fault = Diagnostic::error(section.span, "this effect has no form").label("which form?");
             let help = "A power takes `exponent`, a linear fraction `slope`, an exponential `rate`, a category `is` and `times`.";

@@ -8,8 +8,8 @@ use super::reader::{Reader, Section};
 use crate::diagnostic::{Diagnostic, Span};
 use crate::quantity::{Dimension, Exact, Quantity, Unit, to_f64};
 
-/// Quantities lie between this and its inverse, in base units: products and quotients of two of them stay finite.
-const FARTHEST: f64 = 1e150;
+/// Quantities lie between this and its inverse, in base units: products and quotients of four of them stay finite.
+const FARTHEST: f64 = 1e75;
 /// No time of a trial is longer: more than 100,000 years.
 const MOST_HOURS: f64 = 1e9;
 

@@ -21,6 +21,9 @@ pub(super) fn read(reader: &mut Reader, section: &Section, key: &str) -> Option<
         Some(Exact::zero())
     };
     if !section.has("every") {
+        if section.meant("every") {
+            return None;
+        }
         let mut alone = false;
         for entry in ["count", "until"].iter().filter_map(|key| section.get(key)) {
             let said = format!("`{}` needs `every`, the interval between doses", entry.key);

@@ -133,12 +133,18 @@ impl Reader {
             _ => None,
         };
         if let Some(bare) = bare {
-            let percent = format!("{} %", to_f64(&(bare * Exact::from_integer(100.into()))));
+            // Few spread by more than 200 %: what stands above 2 was surely meant as a percentage.
+            let fraction = bare <= Exact::from_integer(2.into());
+            let times = Exact::from_integer(if fraction { 100 } else { 1 }.into());
+            let percent = format!("{} %", to_f64(&(bare * times)));
+            let fault = Diagnostic::error(node.span, format!("`{key}` wants a percentage")).label("no `%`");
             self.report(
-                Diagnostic::error(node.span, format!("`{key}` wants a percentage"))
-                    .label("no `%`")
-                    .help(format!("If this is meant as a fraction, write \"{percent}\"."))
-                    .mend(node.span, format!("\"{percent}\"")),
+                if fraction {
+                    fault.help(format!("If this is meant as a fraction, write \"{percent}\"."))
+                } else {
+                    fault.help(format!("Write \"{percent}\"."))
+                }
+                .mend(node.span, format!("\"{percent}\"")),
             );
             return None;
         }

@@ -122,8 +122,13 @@ pub(super) fn limits(
     }
     let varies = varies?;
     if *varies == Varies::Not && !SPREADS.iter().any(|key| section.has(key)) {
-        let fault = Diagnostic::warning(at, format!("the limits do nothing: `{name}` has no random part"));
-        reader.report(fault.label("limits of what?"));
+        if ["scale", "plus"].iter().any(|key| section.has(key)) {
+            let said = format!("`{name}` has no random part: its limits only cut off what the covariates do");
+            reader.report(Diagnostic::warning(at, said).label("cut off here"));
+        } else {
+            let fault = Diagnostic::warning(at, format!("the limits do nothing: `{name}` has no random part"));
+            reader.report(fault.label("limits of what?"));
+        }
     }
     let held = typical.filter(|typical| *typical > 0.0).map(|typical| held(*varies, typical, low, high));
     if held.is_some_and(|held| held < LEAST_HELD) {

@@ -6,6 +6,9 @@ use super::{Cells, Place, Ranks, WindowEdges, series::Search};
 /// run in a hundred has one among its 1,000 places.
 const WIDTHS: f64 = 4.5;
 
+/// A value that more than one in so many share is a tie.
+const TIES: usize = 256;
+
 /// Where in a pilot of some size the order statistics of a run lie, give or take the pilot's own error.
 #[derive(Clone, Debug)]
 pub struct Pilot {
@@ -60,7 +63,9 @@ impl Pilot {
             // Everyone alike, as before the first dose or without variability.
             return Search::new(&[Place::At(*first)], window, signed, 0.0);
         }
-        let mut ties: Vec<f64> = sorted.windows(2).filter(|pair| pair[0] == pair[1]).map(|pair| pair[0]).collect();
+        // Values that few share are kept as any other: every tie costs comparisons, however rare it is.
+        let few = (sorted.len() / TIES).max(1);
+        let mut ties: Vec<f64> = sorted.windows(few + 1).filter(|run| run[0] == run[few]).map(|run| run[0]).collect();
         ties.dedup();
         let between: Vec<(f64, f64)> = self
             .spans

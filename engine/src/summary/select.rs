@@ -66,7 +66,9 @@ pub(super) fn select(
         // Many short lists are mostly remainders, which are sifted one by one.
         let mut all = std::mem::take(&mut scratch.all);
         all.clear();
-        lists.iter().for_each(|list| all.extend_from_slice(list));
+        for list in lists {
+            all.extend_from_slice(list);
+        }
         select(&[&all], kind, spans, wanted, scratch, found);
         scratch.all = all;
         return;

@@ -40,12 +40,15 @@ pub struct Search {
     pub share: f64,
 }
 
+/// From here on the upper half of a value's bits orders values to a relative 1e-6; below, numbers grow sparse.
+const LEAST_WIDE: f64 = 1e-300;
+
 /// Patients below, within and above a window.
 pub type Parts = [u64; 3];
 
 impl Search {
     /// Looks in `places`, in rising order, which may touch but not overlap; `share` is the part of the values expected there.
-    /// `signed` says that values may be negative.
+    /// `signed` says that values may be negative, or that places must not be widened.
     pub fn new(places: &[Place], window: Option<WindowEdges>, signed: bool, share: f64) -> Self {
         let brackets: Vec<(f64, f64)> = places
             .iter()
@@ -66,8 +69,9 @@ impl Search {
             edges.extend([window.low, window.beyond]);
         }
         edges.extend(points.iter().flat_map(|value| [*value, value.next_up()]));
-        // Ties within brackets are kept out by comparing whole values.
-        let exact = signed || (!points.is_empty() && !brackets.is_empty());
+        // Ties within brackets are kept out by comparing whole values; next to 0 the upper half of a value tells too little.
+        let coarse = brackets.iter().any(|&(low, high)| (low > 0.0 && low < LEAST_WIDE) || high < LEAST_WIDE);
+        let exact = signed || coarse || (!points.is_empty() && !brackets.is_empty());
         let sieve = if exact { Sieve::exact(&brackets, &edges) } else { Sieve::wide(&brackets, &edges) };
         Self { sieve, points, window: window.is_some(), share }
     }
