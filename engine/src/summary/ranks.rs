@@ -32,12 +32,16 @@ impl Ranks {
         let floor = place.floor();
         let p = to_f64(&probability);
         let (lower, upper) = order_statistic_ranks(n, p, level);
+        let at = floor.to_integer().to_u64().expect("a rank of a sample");
+        let fraction = to_f64(&(place - floor));
+        // Far out in a small sample the percentile lies between two order statistics of which the outer one would do as a bound.
+        let next = at + u64::from(fraction > 0.0);
         Self {
             probability: p,
-            at: floor.to_integer().to_u64().expect("a rank of a sample"),
-            fraction: to_f64(&(place - floor)),
-            lower: lower.map(|rank| rank - 1),
-            upper: upper.map(|rank| rank - 1),
+            at,
+            fraction,
+            lower: lower.map(|rank| (rank - 1).min(at)),
+            upper: upper.map(|rank| (rank - 1).max(next)),
         }
     }
 
@@ -52,5 +56,23 @@ impl Ranks {
     /// The percentile from its two order statistics.
     pub fn interpolate(&self, at: f64, next: f64) -> f64 {
         if self.fraction > 0.0 { at + self.fraction * (next - at) } else { at }
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn an_interval_holds_its_percentile() {
+        for n in [1, 2, 3, 10, 255, 256, 257, 8193] {
+            for thousandths in [1u32, 10, 2500, 5000, 50_000, 97_500, 99_990, 99_999] {
+                let percentile = Exact::new(thousandths.into(), 1000.into());
+                let ranks = Ranks::new(&percentile, n, 0.95);
+                let next = ranks.at + u64::from(ranks.fraction > 0.0);
+                assert!(ranks.lower.is_none_or(|lower| lower <= ranks.at), "{n} {thousandths}: {ranks:?}");
+                assert!(ranks.upper.is_none_or(|upper| next <= upper && upper < n), "{n} {thousandths}: {ranks:?}");
+            }
+        }
     }
 }
