@@ -182,6 +182,22 @@ fn what_cannot_be_a_scenario_is_refused() {
 }
 
 #[test]
+fn a_patient_that_no_body_can_be_is_named_by_check_and_by_run() {
+    // A straight line through the weights: below zero for the lightest.
+    let effect = r#"covariate = "weight", reference = "70 kg", slope = "0.05 /kg""#;
+    let faulty = SCENARIO.replace(r#"covariate = "weight", reference = "70 kg", exponent = 0.75"#, effect);
+    assert_ne!(faulty, SCENARIO);
+    let folder = fresh(&faulty);
+    let said = ["check", "run"].map(|command| refused(&folder, &[command, "arm.toml"], 2));
+    let patient = said.each_ref().map(|said| {
+        let (_, rest) = said.split_once("patient ").expect("a patient is named");
+        assert!(rest.contains("`clearance` of -"), "{said}");
+        rest.split(' ').next().map(str::to_owned)
+    });
+    assert_eq!(patient[0], patient[1], "the same patient, the first one");
+}
+
+#[test]
 fn usage_errors_are_bad_input() {
     let folder = fresh(SCENARIO);
     for arguments in [

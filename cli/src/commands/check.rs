@@ -17,7 +17,7 @@ pub(crate) fn run(options: &CheckOptions, printer: &Printer) -> Result<(), Fault
     let limits = options.common.limits();
     let plan = Plan::new(scenario, &limits)?;
     let sampled = SAMPLE.min(plan.scenario().population.size);
-    let population = plan.sample(sampled);
+    let population = plan.sample(sampled)?;
     let explanation = plan.explain();
     let checked = Checked { plan: &plan, explanation: &explanation, population: &population, sampled };
     printer.out(&match options.common.format {

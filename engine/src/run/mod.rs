@@ -109,7 +109,10 @@ impl Plan {
     }
 
     /// The first `patients` patients of the population, summarised; for `neap check`. No concentrations are computed.
-    pub fn sample(&self, patients: u64) -> Vec<Realised> {
+    ///
+    /// # Errors
+    /// [`Fault::Refused`] where one of them has a parameter that no body can have, as [`Plan::run`] does.
+    pub fn sample(&self, patients: u64) -> Result<Vec<Realised>, Fault> {
         let patients = patients.min(self.scenario().population.size);
         let ranks = quantity_ranks(patients);
         population::sample(self, patients, &ranks)

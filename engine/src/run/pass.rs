@@ -74,7 +74,7 @@ pub(super) fn pass<S: Sink + Send>(
 }
 
 /// The same patient whatever the threads: the first one.
-fn impossible_parameter(plan: &Plan, patient: u64, found: Impossible) -> Fault {
+pub(super) fn impossible_parameter(plan: &Plan, patient: u64, found: Impossible) -> Fault {
     let (name, unit) = (found.role.name(plan.scenario().drug.model), found.role.unit());
     let value = found.value;
     Fault::Refused {

@@ -1,9 +1,11 @@
 //! The population as sampled, beside what was asked for.
 
+use super::pass::impossible_parameter;
 use super::resolve::{Answer, Series, ranks_of};
 use super::worker::Worker;
 use super::{POPULATION_PERCENTILES, Realised, band_value};
 use crate::cohort::{ASKED_PERCENTILES, Asked};
+use crate::diagnostic::Fault;
 use crate::math::LANES;
 use crate::plan::Plan;
 use crate::scenario::Spread;
@@ -23,7 +25,7 @@ pub(super) fn realised(plan: &Plan, patients: u64, ranks: &[Ranks], answer: &Ans
 }
 
 /// The first patients, drawn here and now, without concentrations.
-pub(super) fn sample(plan: &Plan, patients: u64, ranks: &[Ranks]) -> Vec<Realised> {
+pub(super) fn sample(plan: &Plan, patients: u64, ranks: &[Ranks]) -> Result<Vec<Realised>, Fault> {
     let mut worker = Worker::new(plan);
     let mut values: Vec<Vec<f64>> = vec![Vec::with_capacity(patients as usize); plan.quantities()];
     let mut moments = vec![Moments::default(); plan.quantities()];
@@ -31,6 +33,9 @@ pub(super) fn sample(plan: &Plan, patients: u64, ranks: &[Ranks]) -> Vec<Realise
     for first in (0..patients).step_by(LANES) {
         let count = (patients - first).min(LANES as u64) as usize;
         worker.draw(first);
+        if let Some(found) = plan.individuals.impossible(&worker.parameters, count) {
+            return Err(impossible_parameter(plan, first + found.lane as u64 + 1, found));
+        }
         for (index, row) in worker.covariates.iter().chain(&worker.parameters).enumerate() {
             values[index].extend_from_slice(&row[..count]);
             moments[index].absorb(row, centres[index], count);
@@ -55,7 +60,7 @@ pub(super) fn sample(plan: &Plan, patients: u64, ranks: &[Ranks]) -> Vec<Realise
             }
         })
         .collect();
-    rows(plan, patients, ranks, &found, &moments)
+    Ok(rows(plan, patients, ranks, &found, &moments))
 }
 
 fn rows(plan: &Plan, patients: u64, ranks: &[Ranks], found: &[Series], moments: &[Moments]) -> Vec<Realised> {
