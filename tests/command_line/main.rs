@@ -124,6 +124,15 @@ fn a_run_leaves_a_folder_and_a_summary() {
     }
     assert!(!said.contains('\u{1b}') && !aside.contains('\u{1b}'), "no colour where there is no terminal");
     assert!(!aside.contains('\r'), "no bar where there is no terminal: {aside:?}");
+    assert!(said.contains("Written to arm-results"), "{said}");
+}
+
+#[test]
+fn a_plain_locale_gets_plain_characters() {
+    let folder = fresh(SCENARIO);
+    let output = neap(&folder).args(["run", "arm.toml"]).env_remove("LANG").env("LC_ALL", "C").output().unwrap();
+    assert_eq!(output.status.code(), Some(0), "{}", text(&output.stderr));
+    assert!(output.stdout.is_ascii(), "{}", text(&output.stdout));
 }
 
 #[test]
@@ -142,6 +151,12 @@ fn json_is_json_and_nothing_else() {
         assert_eq!(output.status.code(), Some(0), "{}", text(&output.stderr));
         let value: serde_json::Value = serde_json::from_slice(&output.stdout).expect("one JSON document");
         assert!(value.is_object());
+        // In the answer of a run the three parts of the population make up the whole.
+        if command[0] == "run" {
+            let shares = &value["arms"][0]["times"][0]["shares"];
+            let part = |name: &str| shares[name]["share"].as_f64().expect("a share");
+            assert!((part("below") + part("within") + part("above") - 1.0).abs() < 1e-12, "{shares}");
+        }
     }
 }
 
@@ -150,7 +165,9 @@ fn check_writes_nothing() {
     let folder = fresh(SCENARIO);
     let output = run(&folder, &["check", "arm.toml"]);
     assert_eq!(output.status.code(), Some(0), "{}", text(&output.stderr));
-    assert!(text(&output.stdout).contains("20,000"));
+    for part in ["20,000", "clearance: typically 5 L/h"] {
+        assert!(text(&output.stdout).contains(part), "`{part}` in {}", text(&output.stdout));
+    }
     assert_eq!(names(&folder), ["arm.toml"]);
 }
 
@@ -166,6 +183,8 @@ fn a_faulty_scenario_is_refused_with_all_its_faults() {
         for part in ["arm.toml:", "5 mg", "cvv", "40 mg/L"] {
             assert!(said.contains(part), "`{part}` in {said}");
         }
+        assert!(said.find("5 mg") < said.find("40 mg/L"), "in the order of the file: {said}");
+        assert!(said.trim_end().ends_with("faults; nothing was written"), "{said}");
     }
 }
 
@@ -313,6 +332,23 @@ fn a_reader_that_goes_away_is_no_crash() {
         .output()
         .expect("bash starts");
     assert!(!text(&output.stderr).contains("panicked"), "{}", text(&output.stderr));
+}
+
+/// A run whose reader is gone from the start still leaves its folder, and is no failure.
+#[test]
+fn a_run_that_nobody_reads_is_no_failure() {
+    let folder = fresh(SCENARIO);
+    let piped = std::process::Stdio::piped;
+    let mut child = neap(&folder)
+        .args(["run", "arm.toml", "--out", "new/results"])
+        .stdout(piped())
+        .stderr(piped())
+        .spawn()
+        .unwrap();
+    drop(child.stdout.take());
+    let output = child.wait_with_output().expect("it ends");
+    assert_eq!((output.status.code(), text(&output.stderr)), (Some(0), String::new()));
+    assert_eq!(names(folder.path().join("new")), ["results"]);
 }
 
 #[test]
