@@ -344,3 +344,30 @@ fn without_variability_everyone_is_typical() {
         assert!((all.parameters[4][i] - 0.8).abs() < 1e-15);
     }
 }
+
+/// What enters 100,000 h into a study, read three seconds later, is what enters at its beginning, read three seconds later. The lag
+/// itself is a rounded number: three seconds after 0.1 h that is worth 2e-14, and 1e-10 is promised.
+#[test]
+fn a_lag_late_in_a_study_keeps_its_digits() {
+    let concentration = |dose: &str, time: &str| {
+        let text = format!(
+            "neap = 1\n[population]\nsize = 1\nseed = 1\n[drug]\nname = \"invented\"\nmodel = \"two-compartment\"\n\
+             [drug.parameter.clearance]\ntypical = \"5 L/h\"\n[drug.parameter.central_volume]\ntypical = \"40 L\"\n\
+             [drug.parameter.intercompartmental_clearance]\ntypical = \"8 L/h\"\n\
+             [drug.parameter.peripheral_volume]\ntypical = \"60 L\"\n[drug.parameter.absorption_rate]\n\
+             typical = \"1.1 /h\"\n[drug.parameter.lag_time]\ntypical = \"0.1 h\"\n[[arm]]\nname = \"only\"\n\
+             [[arm.dose]]\namount = \"100 mg\"\nroute = \"oral\"\nfirst_at = \"{dose} h\"\n[output]\n\
+             times = [\"{time} h\"]\npercentiles = [50]\n"
+        );
+        run(&text).arms[0].times[0].bands[0].value
+    };
+    // Closed form for so short a time t: ka D t / V (1 - (ka + (CL + Q) / V) t / 2), whose next term is below 1e-6 of it.
+    let t: f64 = 0.0008;
+    let near = 1.1 * 100.0 * t / 40.0 * (1.0 - (1.1 + 13.0 / 40.0) * t / 2.0);
+    let early = concentration("0", "0.1008");
+    assert!((early - near).abs() < 1e-6 * near, "{early} against {near}");
+    for (dose, time) in [("100000", "100000.1008"), ("99999.7", "99999.8008")] {
+        let late = concentration(dose, time);
+        assert!((late - early).abs() <= 1e-12 * early, "dose at {dose} h: {late} against {early}");
+    }
+}

@@ -2,6 +2,7 @@
 
 use multiversion::multiversion;
 
+use super::Moment;
 use super::timetable::{Fold, Timetable, Track};
 use crate::kinetics::{Infused, Rates, Step, Structure};
 use crate::math::{LANES, Row};
@@ -158,7 +159,7 @@ impl March {
                     let lags = (self.shortest_lag, self.longest_lag);
                     while end < range.end
                         && timetable.steps[end - 1] == span
-                        && track.quiet(&timetable.times, end - 1, state.pending, lags)
+                        && track.quiet(&timetable.moments, end - 1, state.pending, lags)
                     {
                         end += 1;
                     }
@@ -191,7 +192,7 @@ impl March {
                 }
                 if !track.lagged.is_empty() {
                     let lags = (self.shortest_lag, self.longest_lag);
-                    folding.lagged(track, &timetable.times, index, &self.lag, lags, state);
+                    folding.lagged(track, &timetable.moments, index, &self.lag, lags, state);
                 }
                 if entering {
                     state.concentrations[index - start] = state.central;
@@ -284,22 +285,22 @@ impl Folding<'_> {
     fn lagged(
         &mut self,
         track: &Track,
-        times: &[f64],
+        times: &[Moment],
         index: usize,
         lag: &Row,
         (shortest, longest): (f64, f64),
         state: &mut State,
     ) {
         let now = times[index];
-        let before = if index == 0 { f64::NEG_INFINITY } else { times[index - 1] };
+        let before = if index == 0 { Moment::NEVER } else { times[index - 1] };
         // Doses that have reached the last lane are done with.
-        while state.pending < track.lagged.len() && longest <= before - track.lagged[state.pending] {
+        while state.pending < track.lagged.len() && longest <= before.since(track.lagged[state.pending]) {
             state.pending += 1;
         }
-        for &dose in track.lagged[state.pending..].iter().take_while(|&&dose| shortest <= now - dose) {
+        for &dose in track.lagged[state.pending..].iter().take_while(|&&dose| shortest <= now.since(dose)) {
             let mut ago = Row::ZERO;
             let mut entering = Row::ZERO;
-            enters(dose, lag, before, now, &self.entry.mouth, &mut ago, &mut entering);
+            enters(before.since(dose), now.since(dose), lag, &self.entry.mouth, &mut ago, &mut entering);
             self.matrix.fill_from_gut(self.structure, self.rates, &ago);
             add_product(&mut state.gut, &entering, &self.matrix.gg);
             add_product(&mut state.central, &entering, &self.matrix.cg);
@@ -310,13 +311,13 @@ impl Folding<'_> {
     }
 }
 
-/// For each lane: how long ago a dose entered, and how much of it, if it entered after `before` and until `now`; else 0. The lag is
-/// taken from the time since the dose, which is short where both are late: late in a study a sum of the two would lose digits.
+/// For each lane: how long ago a dose entered, and how much of it, if its lag ran out between the two times since the dose, the later
+/// one included; else 0.
 #[multiversion(targets("x86_64+avx512f+avx512bw+avx512dq+avx512vl", "x86_64+avx2"))]
-fn enters(dose: f64, lag: &Row, before: f64, now: f64, entry: &Row, ago: &mut Row, entering: &mut Row) {
+fn enters(before: f64, now: f64, lag: &Row, entry: &Row, ago: &mut Row, entering: &mut Row) {
     for lane in 0..LANES {
-        let enters = lag.0[lane] > before - dose && lag.0[lane] <= now - dose;
-        ago.0[lane] = if enters { now - dose - lag.0[lane] } else { 0.0 };
+        let enters = lag.0[lane] > before && lag.0[lane] <= now;
+        ago.0[lane] = if enters { now - lag.0[lane] } else { 0.0 };
         entering.0[lane] = if enters { entry.0[lane] } else { 0.0 };
     }
 }

@@ -3,6 +3,7 @@
 
 use num_traits::Zero;
 
+use super::Moment;
 use crate::dosing::{Protocol, Shape};
 use crate::quantity::{Exact, to_f64};
 use crate::scenario::Route;
@@ -33,7 +34,7 @@ pub struct Track {
     /// For each output time, what entered since the one before.
     pub folds: Vec<Vec<Fold>>,
     /// Nominal dose times in h, for lanes whose lag moves them; empty where nothing is lagged.
-    pub lagged: Vec<f64>,
+    pub lagged: Vec<Moment>,
     /// First output time at which anything can have entered.
     pub first: usize,
     /// Whether it goes through the gut.
@@ -45,13 +46,19 @@ pub struct Track {
 impl Track {
     /// Whether nothing enters at output time `index`, by the shortest and the longest lag of a block and the first dose that is not
     /// done with.
-    pub(super) fn quiet(&self, times: &[f64], index: usize, pending: usize, (shortest, longest): (f64, f64)) -> bool {
-        let before = if index == 0 { f64::NEG_INFINITY } else { times[index - 1] };
+    pub(super) fn quiet(
+        &self,
+        times: &[Moment],
+        index: usize,
+        pending: usize,
+        (shortest, longest): (f64, f64),
+    ) -> bool {
+        let before = if index == 0 { Moment::NEVER } else { times[index - 1] };
         self.folds[index].is_empty()
             && !self.lagged[pending.min(self.lagged.len())..]
                 .iter()
-                .take_while(|&&dose| shortest <= times[index] - dose)
-                .any(|&dose| longest > before - dose)
+                .take_while(|&&dose| shortest <= times[index].since(dose))
+                .any(|&dose| longest > before.since(dose))
     }
 }
 
@@ -60,6 +67,8 @@ impl Track {
 pub struct Timetable {
     /// Output times in h.
     pub times: Vec<f64>,
+    /// The same to more digits.
+    pub moments: Vec<Moment>,
     /// The step that leads to each output time but the first.
     pub steps: Vec<Span>,
     /// The distinct lengths of time, in h.
@@ -119,6 +128,7 @@ impl Timetable {
         }
         Self {
             times: times.iter().map(to_f64).collect(),
+            moments: times.iter().map(Moment::new).collect(),
             steps,
             spans: lengths,
             uses: spans.uses,
@@ -135,7 +145,7 @@ fn track(shape: &Shape, times: &[Exact], lagged: bool, spans: &mut Spans) -> Tra
     let mut over = None;
     match &shape.route {
         Route::Oral if lagged => {
-            let lagged = shape.times.iter().map(to_f64).collect();
+            let lagged = shape.times.iter().map(Moment::new).collect();
             return Track { folds, lagged, first, oral, over };
         }
         Route::Oral | Route::Bolus => {
