@@ -8,7 +8,8 @@ use std::fmt::Write as _;
 
 use neap_engine::kinetics::Structure;
 use neap_engine::model::{Flow, Network};
-use neap_engine::plan::{DEFAULT_MEMORY, Plan};
+use neap_engine::plan::{DEFAULT_MEMORY, Limits, Plan};
+use neap_engine::run::Watch;
 use neap_engine::scenario::{Model, Role};
 use neap_tests::{assert_same, facts, least_memory, patients, plan, run, run_within, scenario};
 use proptest::prelude::*;
@@ -336,9 +337,11 @@ fn spelling_changes_no_bit() {
 }
 
 /// The shorthands and the networks they stand for, written out in another order and with other names, are solved as one
-/// structure, and so with the same bytes.
+/// structure, and with the same bytes; a network that is none of them is refused.
 #[test]
 fn a_shorthand_is_its_network() {
+    let limits = Limits { threads: 2, memory: DEFAULT_MEMORY };
+    let mut compared = 0;
     for absorbed in [false, true] {
         for model in [Model::OneCompartment, Model::TwoCompartment] {
             let mut written = Network::default();
@@ -360,8 +363,21 @@ fn a_shorthand_is_its_network() {
             let shorthand = Structure::recognise(&Network::expand(model, absorbed));
             assert!(shorthand.is_some());
             assert_eq!(Structure::recognise(&written), shorthand);
+            for text in [usual(9000), ties(9000)] {
+                let scenario = scenario(&text);
+                let same = scenario.drug.model == model && absorbed;
+                let planned = Plan::of_network(scenario, &written, &limits);
+                if same {
+                    let results = planned.expect("it is the scenario's own").run(&Watch::new()).unwrap();
+                    assert_same(&facts(&run(&text)), &facts(&results), "a shorthand and its network");
+                    compared += 1;
+                }
+            }
+            written.compartment("loose", None);
+            assert!(Plan::of_network(scenario(&usual(9000)), &written, &limits).is_err());
         }
     }
+    assert_eq!(compared, 2, "one with one compartment, one with two");
 }
 
 /// One patient's concentrations, time by time.

@@ -17,6 +17,12 @@ pub struct Structure {
 }
 
 impl Structure {
+    /// The parameters it needs.
+    pub fn roles(&self) -> impl Iterator<Item = Role> {
+        let (exchange, volume) = self.peripheral.unzip();
+        [Some(self.central_volume), Some(self.clearance), self.absorption_rate, exchange, volume].into_iter().flatten()
+    }
+
     /// Recognises a network; `None` where it is not one of these structures.
     pub fn recognise(network: &Network) -> Option<Self> {
         let mut out = None;

@@ -16,7 +16,7 @@ use crate::diagnostic::Fault;
 use crate::dosing::Protocol;
 use crate::kinetics::Structure;
 use crate::model::{Individuals, Network};
-use crate::scenario::{Role, Scenario};
+use crate::scenario::{Role, Route, Scenario};
 use crate::summary::WindowEdges;
 
 /// What will be computed.
@@ -45,15 +45,32 @@ impl Plan {
     ///
     /// # Errors
     /// [`Fault::Refused`] where the budget is too small for the blocks in work.
-    ///
-    /// # Panics
-    /// If a shorthand is not a structure that the solver knows; each is.
     pub fn new(scenario: Scenario, limits: &Limits) -> Result<Arc<Self>, Fault> {
+        let absorbed = scenario.drug.parameters.iter().any(|parameter| parameter.role == Role::AbsorptionRate);
+        let network = Network::expand(scenario.drug.model, absorbed);
+        Self::of_network(scenario, &network, limits)
+    }
+
+    /// Plans a scenario whose drug moves as `network` says, in place of the shorthand that the scenario names.
+    ///
+    /// # Errors
+    /// [`Fault::Refused`] where the solver does not know the network's structure, the scenario lacks one of its parameters, doses by mouth have no gut to go to, or the
+    /// budget is too small for the blocks in work.
+    pub fn of_network(scenario: Scenario, network: &Network, limits: &Limits) -> Result<Arc<Self>, Fault> {
         let protocol = Protocol::new(&scenario.arms);
         let individuals = Individuals::new(&scenario, 0);
-        let absorbed = individuals.index(Role::AbsorptionRate).is_some();
-        let network = Network::expand(scenario.drug.model, absorbed);
-        let structure = Structure::recognise(&network).expect("a shorthand is a structure that the solver knows");
+        let oral = protocol.shapes.iter().any(|shape| shape.route == Route::Oral);
+        let known = |structure: &Structure| {
+            structure.roles().all(|role| individuals.index(role).is_some())
+                && (structure.absorption_rate.is_some() || !oral)
+        };
+        let structure = Structure::recognise(network).filter(known).ok_or_else(|| Fault::Refused {
+            message: "these compartments and flows are not among those that can be solved, or lack a parameter"
+                .to_owned(),
+            help:
+                "give a central compartment that is eliminated by a clearance, and at most a gut and a peripheral one"
+                    .to_owned(),
+        })?;
         let lagged = individuals.index(Role::LagTime).is_some();
         let timetable = Timetable::new(&protocol, &scenario.output.times, lagged);
         let window = scenario.window.as_ref().map(|window| WindowEdges::new(window.low, window.high));
